@@ -1,0 +1,64 @@
+// What a trial leaves in the store: plain records that the sequencer fills and db/ writes. No SQL here. Any thread.
+#pragma once
+#include <array>
+#include <cstdint>
+#include <optional>
+#include <string>
+#include <vector>
+
+#include "base/finding.hpp"
+#include "limits/judge.hpp"
+
+namespace jigwright {
+
+/// Where a result comes from. Stored; never renumbered. Simulated and measured trials don't share a store.
+enum class Origin : std::uint8_t { measured = 0, simulated = 1, taken = 2 };
+
+/// A file that judged: its kind ("plan", "jig", "limits", "dialect") and full text. Kept once by its SHA-256.
+struct Document {
+  std::string kind;
+  std::string name;  ///< as the user named it, for messages only
+  std::string text;
+};
+
+struct InstrumentIdentity {
+  std::string instrument, maker, model, serial, firmware;
+};
+
+/// Known when the trial begins; written at once as an open VOID, so that a killed trial shows.
+struct TrialStart {
+  std::string serial;
+  std::string order;    ///< empty = no known order
+  std::string station;  ///< the station's name
+  int nest{1};
+  std::int64_t at_us{};  ///< UTC, microseconds since 1970
+  Origin origin{Origin::measured};
+  std::string operator_name;        ///< empty = not logged in
+  std::string program;              ///< name and version
+  std::string depth;                ///< "full" or "short", and why
+  std::vector<Document> documents;  ///< plan, jig, limits, dialects, scenario
+  std::string plan;                 ///< the plan's id
+  std::string limit_set;            ///< the limit set's id
+  std::int64_t limit_revision{};
+};
+
+/// One metric of the trial: its name, limit and what was found.
+struct FindingRow {
+  Metric metric;
+  std::optional<Limit> limit;  ///< empty = recorded only
+  Judged judged;
+};
+
+struct TrialEnd {
+  std::int64_t took_ms{};
+  Outcome outcome;  ///< `deciding` is an index into `findings`
+  std::vector<FindingRow> findings;
+  std::vector<InstrumentIdentity> instruments;
+  std::vector<std::pair<std::string, int>> reduce_versions;  ///< step kind -> version
+  std::optional<double> ambient_C;
+  std::string safe_state;  ///< empty = confirmed; else what is unconfirmed
+  int readings_format{1};  ///< how `readings` is laid out (sequencer/raw_readings.hpp)
+  std::string readings;    ///< bytes
+};
+
+}  // namespace jigwright

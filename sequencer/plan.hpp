@@ -1,0 +1,74 @@
+// A plan made ready: plan.toml, jig.toml and limits.toml read together, steps expanded, every metric matched with its
+// limit. Made once, then shared by all nests and trials; never changed. Reading does file input; the rest is pure.
+#pragma once
+#include <memory>
+#include <optional>
+#include <string>
+#include <vector>
+
+#include "base/source.hpp"
+#include "fixtures/jig.hpp"
+#include "limits/limit.hpp"
+#include "steps/step.hpp"
+
+namespace jigwright {
+
+struct Plan {
+  std::string id;  ///< "bridge-amplifier-sweep"
+  std::string title;
+  std::string jig_file;  ///< resolved against the plan's folder
+  std::string limits_file;
+  BoardFacts board;
+  bool stop_at_first_miss{false};
+  double time_limit_s{};  ///< a trial longer than this is ended as VOID
+  std::vector<std::unique_ptr<Step>> steps;
+  std::vector<const StepKind*> kinds;  ///< beside steps
+  std::shared_ptr<const SourceText> source;
+};
+
+/// One [[limit]] of limits.toml before it meets the plan's metrics.
+struct LimitEntry {
+  std::string step, metric;
+  std::vector<std::string> variants;  ///< empty = every variant of the metric
+  SourceRegion region;
+  Unit unit{Unit::count};
+  Limit limit;
+};
+
+struct LimitSet {
+  std::string id;
+  std::int64_t revision{};
+  std::string reason, by;  ///< of the revision
+  std::vector<LimitEntry> entries;
+  std::shared_ptr<const SourceText> source;
+};
+
+/// Settings and metrics of all steps at one depth, in playing order.
+struct Expanded {
+  std::vector<Setting> settings;  ///< arranged: phase, then the plan's step order, then arrange()'s order
+  std::vector<Metric> metrics;    ///< of all steps; a step's own start at first_metric[step]
+  std::vector<int> first_metric;
+  std::vector<std::optional<Limit>> limits;  ///< beside metrics
+  double usual_s{}, worst_s{};               ///< physical time of one nest
+  std::int64_t readings{};                   ///< usual number
+};
+
+struct ReadyPlan {
+  std::shared_ptr<const Jig> jig;
+  Plan plan;
+  LimitSet limits;
+  Expanded full;
+};
+
+/// Reads all three files (the plan names the other two), reports every fault of all of them, and expands.
+/// nullptr when any fault was added; warnings and notes may stand in `faults` all the same.
+std::shared_ptr<const ReadyPlan> read_plan(const std::string& plan_path, Faults& faults);
+
+/// The pieces, for tests and later readers. `folder` resolves the files that the plan names.
+Plan read_plan_tree(const Node& root, const std::string& folder, std::shared_ptr<const Jig> jig, Faults& faults);
+LimitSet read_limits_tree(const Node& root, Faults& faults);
+/// Pure: expands every step, arranges, matches limits. A limit for a metric that no step finds is a fault; a metric
+/// without a limit a note.
+Expanded expand_plan(const Plan& plan, const Jig& jig, const LimitSet& limits, Depth depth, Faults& faults);
+
+}  // namespace jigwright
