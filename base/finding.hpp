@@ -4,6 +4,7 @@
 #include <cmath>
 #include <cstdint>
 #include <limits>
+#include <optional>
 #include <string>
 
 #include "base/quantity.hpp"
@@ -40,6 +41,9 @@ struct Metric {
   Unit unit{Unit::count};
   About about{About::board};
   double nominal{std::numeric_limits<double>::quiet_NaN()};  ///< NaN where the limit set must tell
+  /// Bounds that the step itself states (a contact's resistance, a load's proof): in force where the limit set has no
+  /// entry for the metric, so that the jig's own checks are always judged.
+  std::optional<double> own_low, own_high;
 };
 
 struct Finding {
