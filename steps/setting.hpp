@@ -79,8 +79,8 @@ struct Setting {
   std::uint32_t resources{};
   bool only_if_doubtful{
       false};        ///< a known value, read only if the step's earlier settings overloaded or never settled
-  double worst_s{};  ///< longest physical time of settle and readings; filled by finish()
-  double usual_s{};  ///< likewise for the usual number of readings; filled by finish()
+  double worst_s{};  ///< longest physical time of settle and readings; filled by expand()
+  double usual_s{};  ///< likewise for the usual number of readings; filled by expand()
   bool needs_lid{true};
 };
 

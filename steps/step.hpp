@@ -56,7 +56,8 @@ class Step {
   /// All that the step may set and read, the superset: the player may stop or skip, never add.
   virtual Expansion expand(Depth depth) const = 0;
   /// @param records  of this step's settings played so far, in the order played; those of later phases may be missing
-  /// @param settings the whole trial's list, into which the records point
+  /// @param settings the whole trial's list, into which the records point; a record is found by its setting's
+  ///        `position`, and only records of this step are handed in
   /// @return findings for every metric whose settings are all present (its `metric` is an index into this step's
   ///         Expansion::metrics of the same depth); a present setting with bad readings yields a finding with its state
   virtual std::vector<Finding> reduce(Depth depth, std::span<const SettingRecord> records,
