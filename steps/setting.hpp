@@ -67,6 +67,9 @@ struct Setting {
   std::string id;     ///< "under-load/100 pF/+5 V/dc": canonical within the plan, stable when variants are added
   std::string shown;  ///< for the progress line: "100 pF at +5 V"
   int step{};         ///< index of the step in the plan
+  /// Place in its step's Expansion::settings (arrange() may change the order in which settings are played): set by
+  /// expand(), and what reduce() looks up by. -1 = added by the sequencer (a known value), not the step's.
+  int position{-1};
   Phase phase{Phase::powered};
   int group{};   ///< barriers within a step and phase: arrange() permutes only inside one; -1 keeps its place
   RelaySet own;  ///< the nest's own relays (loads, ranges, shorts, supply)
