@@ -7,6 +7,7 @@
 #include <variant>
 #include <vector>
 
+#include "base/quantity.hpp"
 #include "fixtures/instruments.hpp"
 
 namespace jigwright {
