@@ -24,7 +24,7 @@ class Observer {
   virtual void setting_started(const Progress& progress, const std::string& step, const Setting& setting) = 0;
   /// A live value carries no judgement.
   virtual void reading(const Progress& progress, const Setting& setting, const Reading& reading) = 0;
-  virtual void finding(int nest, const FindingRow& row) = 0;
+  virtual void finding(int nest, const Metric& metric, const Limit* limit, const Judged& judged) = 0;
   /// After the record is durable; `record_fault` is set, and the outcome VOID, when it could not be made so.
   virtual void trial_ended(int nest, const TrialStart& start, const TrialEnd& end, const std::string& next_action,
                            const Error* record_fault) = 0;
