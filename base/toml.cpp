@@ -223,10 +223,10 @@ std::optional<Located<double>> TableReader::read_quantity(const Node& n, std::st
     auto inside = [&](double x) { return x >= plausible->low && x <= plausible->high; };
     std::string hint =
         fmt::format("usual is {} to {}", format_quantity(plausible->low, unit), format_quantity(plausible->high, unit));
-    if (inside(v * 1e9))
-      hint += fmt::format("; was M (mega) meant for m (milli)? that would be {}", format_quantity(v * 1e9, unit));
-    if (inside(v / 1e9))
-      hint += fmt::format("; was m (milli) meant for M (mega)? that would be {}", format_quantity(v / 1e9, unit));
+    if (n.text()->find('m') != std::string::npos && inside(v * 1e9))
+      hint += fmt::format("; m is milli, for mega write M: \"{}\"", format_quantity(v * 1e9, unit));
+    if (n.text()->find('M') != std::string::npos && inside(v / 1e9))
+      hint += fmt::format("; M is mega, for milli write m: \"{}\"", format_quantity(v / 1e9, unit));
     warning(n.region, fmt::format("\"{}\": {} is unusual", key, format_quantity(v, unit)), hint);
   }
   return Located<double>{v, n.region};
@@ -242,6 +242,23 @@ std::optional<Located<double>> TableReader::quantity(std::string_view key, Unit 
 Located<double> TableReader::need_quantity(std::string_view key, Unit unit, std::optional<Plausible> plausible) {
   if (ask(key) == nullptr) missing(key, fmt::format("\"... {}\"", symbol(unit)));
   return quantity(key, unit, plausible).value_or(Located<double>{0, node_.region});
+}
+
+Located<double> TableReader::need_positive(std::string_view key, Unit unit, std::optional<Plausible> plausible) {
+  const bool there = has(key);
+  const auto got = there ? quantity(key, unit, plausible) : need_quantity(key, unit, plausible);
+  if (there && got && !(got->value > 0))
+    fault(got->region,
+          fmt::format("\"{}\": expected more than zero, found {}", key, format_quantity(got->value, unit)));
+  return got.value_or(Located<double>{0, node_.region});
+}
+
+Located<double> TableReader::need_not_negative(std::string_view key, Unit unit, std::optional<Plausible> plausible) {
+  const bool there = has(key);
+  const auto got = there ? quantity(key, unit, plausible) : need_quantity(key, unit, plausible);
+  if (there && got && !(got->value >= 0))
+    fault(got->region, fmt::format("\"{}\": expected zero or more, found {}", key, format_quantity(got->value, unit)));
+  return got.value_or(Located<double>{0, node_.region});
 }
 
 std::optional<Located<std::int64_t>> TableReader::integer(std::string_view key, std::int64_t low, std::int64_t high) {

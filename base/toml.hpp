@@ -74,6 +74,10 @@ class TableReader {
   Located<std::string> need_text(std::string_view key);
   std::optional<Located<double>> quantity(std::string_view key, Unit unit, std::optional<Plausible> plausible = {});
   Located<double> need_quantity(std::string_view key, Unit unit, std::optional<Plausible> plausible = {});
+  /// As need_quantity, and the value must be above zero.
+  Located<double> need_positive(std::string_view key, Unit unit, std::optional<Plausible> plausible = {});
+  /// As need_quantity, and the value must be zero or above.
+  Located<double> need_not_negative(std::string_view key, Unit unit, std::optional<Plausible> plausible = {});
   std::optional<Located<std::int64_t>> integer(std::string_view key, std::int64_t low, std::int64_t high);
   Located<std::int64_t> need_integer(std::string_view key, std::int64_t low, std::int64_t high);
   std::optional<Located<bool>> boolean(std::string_view key);
