@@ -358,8 +358,12 @@ Task<TrialResult> Trials::run(int nest, std::string serial, std::string order, i
 
   Player player(bench_, leases_, rules_, person_, stop_, nest);
   Body body(*this, player, nest);
-  co_await play(body, player, nest, start.serial, attempt);
-  // Every path comes here: the body never throws, and the nest is made safe whatever it said.
+  try {
+    co_await play(body, player, nest, start.serial, attempt);
+  } catch (const std::exception& fault) {
+    body.ended_ = {true, std::string("a fault of this program: ") + fault.what()};
+  }
+  // Every path comes here: the nest is made safe whatever the body said.
   const std::string unsafe = co_await player.make_safe();
   end.instruments = identities_;
   end.took_ms = std::chrono::duration_cast<std::chrono::milliseconds>(bench_.clock().now() - began).count();
