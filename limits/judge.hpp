@@ -50,7 +50,7 @@ struct Outcome {
 
 /// GO: every limited metric of the depth met, and the trial ended by itself. NO-GO: any limit about the board missed,
 /// whatever happened afterwards. VOID: everything else, with the reason: early end first, then the first missed limit
-/// about the jig, then unsure, invalid, no evidence.
+/// about the jig, then unsure, invalid, no evidence. A trial without any limited metric proves nothing: VOID.
 /// @param metrics  the depth's full list; `judged[i].finding.metric` points into it. A limited metric without an entry
 ///                 counts as no evidence.
 /// @param limited  for each metric whether it has a limit

@@ -36,13 +36,16 @@ struct Limit {
   std::string reason;  ///< for typed and none
 };
 
-/// Fills `width` and `applied` of a limit whose other fields are set.
-/// Error kind file when the guard band crosses the limits ("the jig is too uncertain for this specification: U = ...,
-/// room = ...") or typed limits lie outside the specification.
+/// Fills `width` and `applied` of a limit whose other fields are set; the caller has put the stated amount of
+/// Guard::inset into `width`, and the test limits of Guard::typed into `applied`. A silent nominal becomes the middle
+/// of a two-sided specification. Error kind file when the guard band crosses the limits ("the jig is too uncertain for
+/// this specification: U = ..., room = ...") or typed limits lie outside the specification, bounds are crossed or
+/// missing, or the nominal lies outside.
 Result<Limit> apply_guard(Limit limit, Unit unit);
 
 /// Share of the room between nominal and the nearer applied bound that is left: 1 at nominal, 0 on the bound, negative
-/// beyond. One-sided without nominal: margin over |bound| (or over the guard width when the bound is 0).
+/// beyond. One-sided without nominal: margin over |bound| (or over the guard width when the bound is 0; 1, 0 or -1 when
+/// that is 0 too).
 /// NaN for a limit without bounds or a value that is none.
 double margin(const Limit& limit, double value);
 
