@@ -22,7 +22,7 @@ class Trials::Body {
 
   Task<Done> play() {
     const auto& settings = expanded_.settings;
-    for (std::size_t first = 0; first < settings.size() && !ended_.early;) {
+    for (std::size_t first = 0; first < settings.size() && !over_;) {
       std::size_t last = first + 1;
       while (last < settings.size() && settings[last].step == settings[first].step &&
              settings[last].phase == settings[first].phase)
@@ -47,7 +47,7 @@ class Trials::Body {
   Task<Done> block(std::size_t first, std::size_t last) {
     const std::size_t first_record = records_.size();
     bool proved = false;
-    for (std::size_t i = first; i < last && !ended_.early; ++i) {
+    for (std::size_t i = first; i < last && !over_; ++i) {
       const Setting& setting = expanded_.settings[i];
       if (setting.only_if_doubtful && !doubtful(first_record)) continue;
       if (seconds(trials_.bench_.clock().now() - began_) > plan_.plan.time_limit_s) {
@@ -63,11 +63,12 @@ class Trials::Body {
       records_.push_back(played.value());
       if (setting.only_if_doubtful) proved = known_value_right(played.value());
     }
-    if (!ended_.early || records_.size() > first_record) reduce(expanded_.settings[first].step, proved);
+    if (records_.size() > first_record) reduce(expanded_.settings[first].step, proved);
     co_return Done{};
   }
 
   void end(std::string reason) {
+    over_ = true;
     if (ended_.early) return;
     ended_.early = true;
     ended_.reason = std::move(reason);
@@ -145,7 +146,7 @@ class Trials::Body {
     const bool bad = j.verdict == Verdict::missed || j.verdict == Verdict::invalid || j.verdict == Verdict::unsure;
     if (!bad) return;
     if (metric.about == About::jig)
-      end({});
+      over_ = true;  // the judgement names the finding
     else if (plan_.plan.stop_at_first_miss && j.verdict == Verdict::missed)
       end("stopped at the first miss, as the plan says");
   }
@@ -192,6 +193,7 @@ class Trials::Body {
   Player& player_;
   int nest_;
   Duration began_;
+  bool over_{false};  ///< nothing more is played; ended_ holds a reason only where no finding is one
   std::vector<bool> found_;
   std::vector<SettingRecord> own_;
   Progress progress_;
