@@ -1,0 +1,19 @@
+// The store's layout and its version. user_version counts layouts; application_id marks the file as ours. Times are
+// integers, UTC microseconds since 1970, and end in _us; other numbers are in SI base units, their unit in `metric`.
+#pragma once
+#include <cstdint>
+
+#include "db/sqlite.hpp"
+
+namespace jigwright {
+
+inline constexpr std::int64_t application_id = 0x4a494757;  ///< "JIGW"
+inline constexpr std::int64_t layout_version = 1;
+
+/// Makes the layout in an empty file, or checks that the file is a store of this layout. A newer or older layout, and a
+/// file that is not a store, are refused: Error kind store.
+/// @param create   an empty file may be made into a store
+/// @param uuid     bytes of the new store's identity
+Result<Done> settle_schema(Database& database, bool create, std::string_view uuid);
+
+}  // namespace jigwright

@@ -1,0 +1,53 @@
+#include "db/store.hpp"
+
+#include <sys/stat.h>
+
+#include <chrono>
+
+#include "db/schema.hpp"
+#include "db/trial_writer.hpp"
+
+namespace jigwright {
+namespace {
+
+bool missing(const std::string& path) {
+  struct stat status {};
+  return path != ":memory:" && ::stat(path.c_str(), &status) != 0;
+}
+
+std::int64_t unix_ms() {
+  using namespace std::chrono;
+  return duration_cast<milliseconds>(system_clock::now().time_since_epoch()).count();
+}
+
+}  // namespace
+
+Store::Store(std::unique_ptr<Database> database)
+    : database_(std::move(database)), writer_(std::make_unique<TrialWriter>(*database_, uuids_)) {}
+
+Store::~Store() = default;
+
+Result<std::unique_ptr<Store>> Store::open(const std::string& path, const StoreOptions& options) {
+  const bool write = options.access == StoreOptions::Access::write;
+  const bool create = write && options.create;
+  if (!create && missing(path))
+    return Error{Error::Kind::store, "there is no store here", path, "check the path, or try a board first"};
+  auto database =
+      Database::open(path, write ? Database::Access::write : Database::Access::read, create, options.busy_ms);
+  if (!database) return database.error();
+  std::unique_ptr<Store> store(new Store(std::move(database.value())));
+  const Uuid uuid = store->uuids_.next(unix_ms());
+  const auto settled = settle_schema(*store->database_, create, bytes(uuid));
+  if (!settled) return settled.error();
+  return store;
+}
+
+Result<OpenTrial> Store::begin_trial(const TrialStart& start) {
+  return writer_->begin(start);
+}
+
+Result<Done> Store::finish_trial(const OpenTrial& open, const TrialEnd& end) {
+  return writer_->finish(open, end);
+}
+
+}  // namespace jigwright

@@ -1,0 +1,45 @@
+// The store: one SQLite file with every trial, board, reel and feed. It records trials for the sequencer, takes in
+// orders, boards, reels and feeds, and answers questions. Owned by the program's main function; one thread at a time.
+// A process that only asks opens it for reading: its transactions are short and never block the line.
+#pragma once
+#include <memory>
+#include <string>
+
+#include "db/trial_log.hpp"
+
+namespace jigwright {
+
+class Database;
+class TrialWriter;
+
+struct StoreOptions {
+  enum class Access { read, write };
+  Access access{Access::write};
+  bool create{true};    ///< make the file when it is missing or empty; only for writing
+  int busy_ms{10'000};  ///< how long to wait for another writer
+};
+
+class Store final : public TrialLog {
+ public:
+  /// Error kind store: missing, not a store, of a newer program, not permitted; the file is then unchanged.
+  static Result<std::unique_ptr<Store>> open(const std::string& path, const StoreOptions& options = {});
+  ~Store() override;
+  Store(const Store&) = delete;
+  Store& operator=(const Store&) = delete;
+
+  Result<OpenTrial> begin_trial(const TrialStart& start) override;
+  Result<Done> finish_trial(const OpenTrial& open, const TrialEnd& end) override;
+
+  /// For db/'s own files and their tests.
+  Database& database() { return *database_; }
+  UuidMaker& uuids() { return uuids_; }
+
+ private:
+  explicit Store(std::unique_ptr<Database> database);
+
+  UuidMaker uuids_;
+  std::unique_ptr<Database> database_;
+  std::unique_ptr<TrialWriter> writer_;
+};
+
+}  // namespace jigwright

@@ -1,0 +1,306 @@
+#include "db/trial_writer.hpp"
+
+#include <algorithm>
+
+#include "db/digest.hpp"
+#include "db/speaks.hpp"
+
+namespace jigwright {
+namespace {
+
+constexpr const char* killed = "the program ended in mid-trial";
+
+const char* origin_word(std::int64_t origin) {
+  return origin == static_cast<int>(Origin::measured)    ? "measured"
+         : origin == static_cast<int>(Origin::simulated) ? "simulated"
+                                                         : "taken";
+}
+
+std::optional<std::string> unless_empty(const std::string& text) {
+  return text.empty() ? std::nullopt : std::optional(text);
+}
+
+bool same(const std::vector<Document>& a, const std::vector<Document>& b) {
+  return std::equal(a.begin(), a.end(), b.begin(), b.end(),
+                    [](const Document& x, const Document& y) { return x.kind == y.kind && x.text == y.text; });
+}
+
+}  // namespace
+
+Result<OpenTrial> TrialWriter::begin(const TrialStart& start) {
+  Transaction transaction(db_, Transaction::Kind::write);
+  check_origin(start);
+  OpenTrial open;
+  open.uuid = uuids_.next(start.at_us / 1000);
+  settle_setup(start);
+  insert_open(start, open);
+  const auto done = transaction.commit();
+  if (done) return open;
+  forget();
+  return done.error();
+}
+
+void TrialWriter::check_origin(const TrialStart& start) {
+  if (start.origin == Origin::taken) return;
+  const auto origin = static_cast<std::int64_t>(start.origin);
+  const auto held = db_.first("SELECT value FROM meta WHERE key = 'origin'");
+  if (!held) return db_.run("INSERT INTO meta VALUES('origin', ?)", origin);
+  if (*held == origin) return;
+  db_.fail({Error::Kind::store,
+            std::string("this store holds ") + origin_word(*held) + " trials, and this trial is " +
+                origin_word(origin) + ": the two don't share a store",
+            db_.path(), "name another store for it"});
+}
+
+TrialWriter::Id TrialWriter::station(const TrialStart& start) {
+  if (const auto id = db_.first("SELECT id FROM station WHERE name = ?", start.station)) return *id;
+  const Uuid uuid = uuids_.next(start.at_us / 1000);
+  db_.run("INSERT INTO station(uuid, name) VALUES(?, ?)", Blob{bytes(uuid)}, start.station);
+  return db_.last_id();
+}
+
+TrialWriter::Id TrialWriter::board(const std::string& serial) {
+  if (const auto id = db_.first("SELECT id FROM board WHERE serial = ?", serial)) return *id;
+  db_.run("INSERT INTO board(serial) VALUES(?)", serial);
+  return db_.last_id();
+}
+
+TrialWriter::Id TrialWriter::order(const std::string& name) {
+  if (const auto id = db_.first("SELECT id FROM product_order WHERE name = ?", name)) return *id;
+  db_.run("INSERT INTO product_order(name) VALUES(?)", name);
+  return db_.last_id();
+}
+
+TrialWriter::Id TrialWriter::person(const std::string& name) {
+  if (const auto id = db_.first("SELECT id FROM person WHERE name = ?", name)) return *id;
+  db_.run("INSERT INTO person(name) VALUES(?)", name);
+  return db_.last_id();
+}
+
+void TrialWriter::settle_setup(const TrialStart& start) {
+  if (setup_ && setup_->plan == start.plan && setup_->program == start.program &&
+      setup_->limit_set == start.limit_set && setup_->number == start.limit_revision &&
+      same(setup_->documents, start.documents))
+    return;
+  std::vector<Id> ids;
+  std::optional<Id> limits;
+  for (const Document& d : start.documents) {
+    ids.push_back(document(d));
+    if (d.kind == "limits") limits = ids.back();
+  }
+  setup_ = Setup{start.plan,      start.program,     start.limit_set,        start.limit_revision,
+                 start.documents, setup(start, ids), revision(start, limits)};
+}
+
+TrialWriter::Id TrialWriter::document(const Document& d) {
+  const std::string digest = sha256(d.text);
+  if (const auto id = db_.first("SELECT id FROM document WHERE sha256 = ?", Blob{digest})) return *id;
+  db_.run("INSERT INTO document(sha256, kind, name, body) VALUES(?, ?, ?, ?)", Blob{digest}, d.kind, d.name, d.text);
+  return db_.last_id();
+}
+
+TrialWriter::Id TrialWriter::setup(const TrialStart& start, const std::vector<Id>& documents) {
+  Canonical record;
+  record.add(start.plan).add(start.program);
+  for (Id id : documents) record.add(id);
+  const std::string digest = sha256(record.bytes());
+  if (const auto id = db_.first("SELECT id FROM setup WHERE sha256 = ?", Blob{digest})) return *id;
+  db_.run("INSERT INTO setup(sha256, plan, program) VALUES(?, ?, ?)", Blob{digest}, start.plan, start.program);
+  const Id made = db_.last_id();
+  for (Id id : documents) db_.run("INSERT OR IGNORE INTO setup_document VALUES(?, ?)", made, id);
+  return made;
+}
+
+TrialWriter::Id TrialWriter::revision(const TrialStart& start, std::optional<Id> document) {
+  if (const auto id = db_.first("SELECT id FROM revision WHERE limit_set = ? AND number = ? AND document IS ?",
+                                start.limit_set, start.limit_revision, document))
+    return *id;
+  const Uuid uuid = uuids_.next(start.at_us / 1000);
+  db_.run("INSERT INTO revision(uuid, limit_set, number, document) VALUES(?, ?, ?, ?)", Blob{bytes(uuid)},
+          start.limit_set, start.limit_revision, document);
+  return db_.last_id();
+}
+
+void TrialWriter::insert_open(const TrialStart& start, OpenTrial& open) {
+  const Id on = board(start.serial);
+  const Id at = station(start);
+  std::optional<Id> ord, who;
+  if (!start.order.empty()) ord = order(start.order);
+  if (!start.operator_name.empty()) who = person(start.operator_name);
+  open.attempt = static_cast<int>(db_.first("SELECT count(*) FROM trial WHERE board = ?", on).value_or(0)) + 1;
+  db_.run(
+      "INSERT INTO trial(uuid, board, ord, station, nest, at_us, state, judgement, void_reason, origin, attempt, "
+      "counts, setup, revision, operator, depth) VALUES(?, ?, ?, ?, ?, ?, 0, 2, ?, ?, ?, 0, ?, ?, ?, ?)",
+      Blob{bytes(open.uuid)}, on, ord, at, start.nest, start.at_us, killed, static_cast<int>(start.origin),
+      open.attempt, setup_ ? setup_->setup : 0, setup_ ? setup_->revision : 0, who, start.depth);
+  open.id = db_.last_id();
+  settle_counts(on);
+}
+
+Result<Done> TrialWriter::finish(const OpenTrial& open, const TrialEnd& end) {
+  Transaction transaction(db_, Transaction::Kind::write);
+  std::vector<Id> metrics;
+  for (const FindingRow& row : end.findings) metrics.push_back(metric(row.metric));
+  Tally tally;
+  for (std::size_t i = 0; i < metrics.size(); ++i) {
+    const Judged& judged = end.findings[i].judged;
+    if (judged.verdict == Verdict::missed) ++tally.missed;
+    if (static_cast<int>(i) == end.outcome.deciding) tally.deciding = metrics[i];
+    if (!(judged.margin < tally.worst_margin.value_or(std::numeric_limits<double>::infinity()))) continue;
+    tally.worst = metrics[i];
+    tally.worst_margin = judged.margin;
+  }
+  close(open, end, tally, applied(end.findings, metrics));
+  insert_findings(open, end.findings, metrics);
+  db_.run("INSERT INTO reading_blob VALUES(?, ?, ?)", open.id, end.readings_format, Blob{end.readings});
+  settle_counts(db_.first("SELECT board FROM trial WHERE id = ?", open.id).value_or(0));
+  const auto done = transaction.commit();
+  if (!done) forget();
+  return done;
+}
+
+void TrialWriter::close(const OpenTrial& open, const TrialEnd& end, const Tally& tally, Id applied) {
+  const Outcome& outcome = end.outcome;
+  const Id with = equipment(end.instruments);
+  const Id reduced = reduction(end.reduce_versions);
+  const auto reason = outcome.judgement == Judgement::void_ ? unless_empty(outcome.void_reason) : std::nullopt;
+  db_.run(
+      "UPDATE trial SET state = 1, took_ms = ?, judgement = ?, void_reason = ?, applied = ?, equipment = ?, "
+      "reduction = ?, ambient_degC = ?, unsafe = ?, nogo = ?, deciding_metric = ?, worst_metric = ?, "
+      "worst_margin = ? WHERE id = ? AND uuid = ? AND state = 0",
+      end.took_ms, static_cast<int>(outcome.judgement), reason, applied, with, reduced, end.ambient_C,
+      unless_empty(end.safe_state), tally.missed, tally.deciding, tally.worst, tally.worst_margin, open.id,
+      Blob{bytes(open.uuid)});
+  if (!db_.failed() && db_.changes() != 1)
+    db_.fail({Error::Kind::store, "trial " + text(open.uuid) + " is not open in this store", db_.path(),
+              "a trial is ended once, in the store where it began"});
+}
+
+void TrialWriter::insert_findings(const OpenTrial& open, const std::vector<FindingRow>& rows,
+                                  const std::vector<Id>& metrics) {
+  // In the key's order, so that the table grows at its right edge.
+  std::vector<std::size_t> at(rows.size());
+  for (std::size_t i = 0; i < at.size(); ++i) at[i] = i;
+  std::sort(at.begin(), at.end(), [&](std::size_t a, std::size_t b) { return metrics[a] < metrics[b]; });
+  for (std::size_t i : at) {
+    const Judged& judged = rows[i].judged;
+    const Finding& f = judged.finding;
+    db_.run("INSERT INTO finding VALUES(?, ?, ?, ?, ?, ?, ?)", open.id, metrics[i], f.value, f.u, f.n,
+            static_cast<int>(f.state), static_cast<int>(judged.verdict));
+  }
+}
+
+TrialWriter::Id TrialWriter::metric(const Metric& m) {
+  const auto about = static_cast<int>(m.about);
+  const auto key = std::tuple(m.name.step, m.name.name, m.name.variant, static_cast<int>(m.unit), about);
+  if (const auto found = metrics_.find(key); found != metrics_.end()) return found->second;
+  auto id = db_.first("SELECT id FROM metric WHERE step = ? AND name = ? AND variant = ? AND unit = ? AND about = ?",
+                      m.name.step, m.name.name, m.name.variant, symbol(m.unit), about);
+  if (!id) {
+    db_.run("INSERT INTO metric(step, name, variant, unit, about) VALUES(?, ?, ?, ?, ?)", m.name.step, m.name.name,
+            m.name.variant, symbol(m.unit), about);
+    id = db_.last_id();
+  }
+  if (!db_.failed()) metrics_.emplace(key, *id);
+  return *id;
+}
+
+TrialWriter::Id TrialWriter::applied(const std::vector<FindingRow>& rows, const std::vector<Id>& metrics) {
+  Canonical record;
+  for (std::size_t i = 0; i < rows.size(); ++i) {
+    if (!rows[i].limit) continue;
+    const Limit& l = *rows[i].limit;
+    record.add(metrics[i]).add(l.specification.low).add(l.specification.high).add(l.nominal);
+    record.add(std::int64_t{static_cast<int>(l.guard)}).add(l.share).add(l.budget_U).add(l.width);
+    record.add(l.applied.low).add(l.applied.high).add(l.reason);
+  }
+  const std::string digest = sha256(record.bytes());
+  if (const auto found = applied_.find(digest); found != applied_.end()) return found->second;
+  auto id = db_.first("SELECT id FROM applied WHERE sha256 = ?", Blob{digest});
+  if (!id) {
+    db_.run("INSERT INTO applied(sha256) VALUES(?)", Blob{digest});
+    id = db_.last_id();
+    for (std::size_t i = 0; i < rows.size(); ++i)
+      if (rows[i].limit) insert_applied_limit(*id, metrics[i], *rows[i].limit);
+  }
+  if (!db_.failed()) applied_.emplace(digest, *id);
+  return *id;
+}
+
+void TrialWriter::insert_applied_limit(Id applied, Id metric, const Limit& l) {
+  db_.run("INSERT INTO applied_limit VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)", applied, metric, l.specification.low,
+          l.specification.high, l.nominal, static_cast<int>(l.guard), l.share, l.budget_U, l.width, l.applied.low,
+          l.applied.high, unless_empty(l.reason));
+}
+
+TrialWriter::Id TrialWriter::equipment(const std::vector<InstrumentIdentity>& instruments) {
+  Canonical record;
+  for (const InstrumentIdentity& i : instruments)
+    record.add(i.instrument).add(i.maker).add(i.model).add(i.serial).add(i.firmware);
+  const std::string digest = sha256(record.bytes());
+  if (const auto found = equipment_.find(digest); found != equipment_.end()) return found->second;
+  auto id = db_.first("SELECT id FROM equipment WHERE sha256 = ?", Blob{digest});
+  if (!id) {
+    db_.run("INSERT INTO equipment(sha256) VALUES(?)", Blob{digest});
+    id = db_.last_id();
+    for (const InstrumentIdentity& i : instruments)
+      db_.run("INSERT OR IGNORE INTO equipment_instrument VALUES(?, ?)", *id, instrument(i));
+  }
+  if (!db_.failed()) equipment_.emplace(digest, *id);
+  return *id;
+}
+
+TrialWriter::Id TrialWriter::instrument(const InstrumentIdentity& i) {
+  if (const auto id = db_.first(
+          "SELECT id FROM instrument WHERE instrument = ? AND maker = ? AND model = ? AND serial = ? AND firmware = ?",
+          i.instrument, i.maker, i.model, i.serial, i.firmware))
+    return *id;
+  db_.run("INSERT INTO instrument(instrument, maker, model, serial, firmware) VALUES(?, ?, ?, ?, ?)", i.instrument,
+          i.maker, i.model, i.serial, i.firmware);
+  return db_.last_id();
+}
+
+TrialWriter::Id TrialWriter::reduction(std::vector<std::pair<std::string, int>> versions) {
+  std::sort(versions.begin(), versions.end());
+  Canonical record;
+  for (const auto& [kind, version] : versions) record.add(kind).add(std::int64_t{version});
+  const std::string digest = sha256(record.bytes());
+  if (const auto found = reduction_.find(digest); found != reduction_.end()) return found->second;
+  auto id = db_.first("SELECT id FROM reduction WHERE sha256 = ?", Blob{digest});
+  if (!id) {
+    db_.run("INSERT INTO reduction(sha256) VALUES(?)", Blob{digest});
+    id = db_.last_id();
+    for (const auto& [kind, version] : versions)
+      db_.run("INSERT OR IGNORE INTO reduction_step VALUES(?, ?, ?)", *id, kind, version);
+  }
+  if (!db_.failed()) reduction_.emplace(digest, *id);
+  return *id;
+}
+
+void TrialWriter::settle_counts(Id board) {
+  std::vector<Id> ids;
+  std::vector<PastTrial> trials;
+  Id held = 0;
+  {
+    Query q = db_.query("SELECT id, judgement, counts FROM trial WHERE board = ? ORDER BY id", board);
+    while (q.next()) {
+      ids.push_back(q.integer(0));
+      trials.push_back({static_cast<Judgement>(q.integer(1)), false});
+      if (q.integer(2) != 0) held = ids.back();
+    }
+  }
+  const auto speaks = speaking_trial(trials);
+  if (!speaks || ids[*speaks] == held) return;
+  db_.run("UPDATE trial SET counts = 0 WHERE id = ?", held);
+  db_.run("UPDATE trial SET counts = 1 WHERE id = ?", ids[*speaks]);
+}
+
+void TrialWriter::forget() {
+  setup_.reset();
+  metrics_.clear();
+  applied_.clear();
+  equipment_.clear();
+  reduction_.clear();
+}
+
+}  // namespace jigwright

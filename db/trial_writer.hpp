@@ -1,0 +1,62 @@
+// Writes trials into the store's tables: the work behind Store::begin_trial and finish_trial. What many trials share
+// (documents, limits, identities, metrics) is kept once and remembered here by its id. db/'s own; one thread.
+#pragma once
+#include <map>
+#include <string>
+#include <tuple>
+#include <unordered_map>
+
+#include "db/sqlite.hpp"
+#include "db/trial_log.hpp"
+
+namespace jigwright {
+
+class TrialWriter {
+ public:
+  TrialWriter(Database& database, UuidMaker& uuids) : db_(database), uuids_(uuids) {}
+
+  Result<OpenTrial> begin(const TrialStart& start);
+  Result<Done> finish(const OpenTrial& open, const TrialEnd& end);
+
+ private:
+  using Id = std::int64_t;
+  struct Setup {
+    std::string plan, program, limit_set;
+    std::int64_t number{};
+    std::vector<Document> documents;
+    Id setup{}, revision{};
+  };
+  struct Tally {
+    int missed{0};
+    std::optional<Id> deciding, worst;
+    std::optional<double> worst_margin;
+  };
+  void check_origin(const TrialStart& start);
+  Id station(const TrialStart& start);
+  Id board(const std::string& serial);
+  Id order(const std::string& name);
+  Id person(const std::string& name);
+  void settle_setup(const TrialStart& start);
+  Id document(const Document& document);
+  Id setup(const TrialStart& start, const std::vector<Id>& documents);
+  Id revision(const TrialStart& start, std::optional<Id> document);
+  Id metric(const Metric& metric);
+  Id applied(const std::vector<FindingRow>& rows, const std::vector<Id>& metrics);
+  Id equipment(const std::vector<InstrumentIdentity>& instruments);
+  Id instrument(const InstrumentIdentity& identity);
+  Id reduction(std::vector<std::pair<std::string, int>> versions);
+  void insert_open(const TrialStart& start, OpenTrial& open);
+  void insert_findings(const OpenTrial& open, const std::vector<FindingRow>& rows, const std::vector<Id>& metrics);
+  void insert_applied_limit(Id applied, Id metric, const Limit& limit);
+  void close(const OpenTrial& open, const TrialEnd& end, const Tally& tally, Id applied);
+  void settle_counts(Id board);
+  void forget();
+
+  Database& db_;
+  UuidMaker& uuids_;
+  std::optional<Setup> setup_;  ///< of the last trial begun
+  std::map<std::tuple<std::string, std::string, std::string, int, int>, Id> metrics_;
+  std::unordered_map<std::string, Id> applied_, equipment_, reduction_;  ///< by digest
+};
+
+}  // namespace jigwright
