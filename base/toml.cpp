@@ -112,6 +112,13 @@ Node convert(const toml::node& from, const Source& source) {
   return out;
 }
 
+/// A finite number, whole or not.
+std::optional<double> number_of(const Node& node) {
+  if (const auto* i = std::get_if<std::int64_t>(&node.value)) return static_cast<double>(*i);
+  const auto* d = std::get_if<double>(&node.value);
+  return d != nullptr && std::isfinite(*d) ? std::optional(*d) : std::nullopt;
+}
+
 }  // namespace
 
 std::string_view Node::kind_name() const {
@@ -206,6 +213,8 @@ Located<std::string> TableReader::need_text(std::string_view key) {
 
 std::optional<Located<double>> TableReader::read_quantity(const Node& n, std::string_view key, Unit unit,
                                                           std::optional<Plausible> plausible) {
+  if (unit == Unit::count)
+    if (const auto number = number_of(n)) return Located<double>{*number, n.region};
   if (n.text() == nullptr || n.is_date) {
     const bool number = n.value.index() == 1 || n.value.index() == 2;
     fault(n.region,
@@ -346,6 +355,20 @@ std::vector<Located<double>> TableReader::quantities(std::string_view key, Unit 
   else
     for (const Node& item : *n->array()) take(item);
   return out;
+}
+
+std::optional<Located<Quantity>> TableReader::any_quantity(std::string_view key) {
+  const Node* n = ask(key);
+  if (n == nullptr) return std::nullopt;
+  if (const auto number = number_of(*n)) return Located<Quantity>{{*number, Unit::count}, n->region};
+  if (n->text() == nullptr || n->is_date) {
+    wrong_kind(key, *n, "a quantity with its unit, as in \"0.5 mV\"");
+    return std::nullopt;
+  }
+  auto q = parse_quantity(*n->text());
+  if (q) return Located<Quantity>{q.value(), n->region};
+  fault(n->region, fmt::format("\"{}\": {}", key, q.error().what), q.error().to_do);
+  return std::nullopt;
 }
 
 const Node* TableReader::table(std::string_view key) {

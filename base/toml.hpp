@@ -89,6 +89,8 @@ class TableReader {
   std::vector<Located<std::string>> need_texts(std::string_view key);
   /// A quantity or an array of quantities.
   std::vector<Located<double>> quantities(std::string_view key, Unit unit);
+  /// A quantity of whatever unit; a bare number is a count.
+  std::optional<Located<Quantity>> any_quantity(std::string_view key);
   /// A sub-table; nullptr when absent or not a table (then a fault).
   const Node* table(std::string_view key);
   const Node* need_table(std::string_view key);
