@@ -344,7 +344,7 @@ Task<Done> Trials::play(Body& body, Player& player, int nest, const std::string&
   co_return Done{};
 }
 
-Task<TrialResult> Trials::run(int nest, std::string serial, std::string order, int attempt) {
+Task<TrialResult> Trials::run(int nest, std::string serial, std::string order) {
   TrialResult result;
   result.start = start_of(nest, std::move(serial), std::move(order));
   const TrialStart& start = result.start;
@@ -361,7 +361,7 @@ Task<TrialResult> Trials::run(int nest, std::string serial, std::string order, i
   Player player(bench_, leases_, rules_, person_, stop_, nest);
   Body body(*this, player, nest);
   try {
-    co_await play(body, player, nest, start.serial, attempt);
+    co_await play(body, player, nest, start.serial, opened.value().attempt);
   } catch (const std::exception& fault) {
     body.ended_ = {true, std::string("a fault of this program: ") + fault.what()};
   }

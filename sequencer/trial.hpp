@@ -42,8 +42,7 @@ class Trials {
   ~Trials();
 
   /// One trial of one board in one nest (from 1). Never throws; every failure is in the result.
-  /// @param attempt  how many times this board has been laid in a nest, from 1: the simulated jig's noise differs by it
-  Task<TrialResult> run(int nest, std::string serial, std::string order, int attempt);
+  Task<TrialResult> run(int nest, std::string serial, std::string order);
 
   /// Ends all trials: the reason goes into their records, and each still makes its nest safe. Also from a signal
   /// handler that runs on the io_context.

@@ -32,4 +32,25 @@ struct LintOptions {
 };
 int lint(const LintOptions& options);
 
+/// The words that `try --fault` knows.
+int list_faults();
+
+struct EnterOptions {
+  std::vector<std::string> files;
+  std::string store;
+};
+int enter(const EnterOptions& options);
+
+struct TraceOptions {
+  std::string serial, reel, store;
+  bool csv{false}, json{false};
+};
+int trace(const TraceOptions& options);
+
+struct ShowOptions {
+  std::string serial, store;
+  bool csv{false}, json{false};
+};
+int show(const ShowOptions& options);
+
 }  // namespace jigwright

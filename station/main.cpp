@@ -1,0 +1,117 @@
+// The command line: reads the words, and hands over to commands.hpp.
+#include <fmt/format.h>
+
+#include <CLI/CLI.hpp>
+
+#include "base/source.hpp"
+#include "sequencer/station_file.hpp"
+#include "station/commands.hpp"
+#include "station/exit_codes.hpp"
+
+namespace {
+
+using namespace jigwright;
+
+constexpr const char* exit_help =
+    "Exit codes: 0 GO or done, 1 NO-GO, 2 VOID, 3 faults in files, 4 usage, 5 store, 6 stopped, 7 other.";
+
+/// "step=answer" in two.
+bool split_answer(const std::string& word, std::pair<std::string, std::string>& out) {
+  const auto at = word.find('=');
+  if (at == std::string::npos || at == 0) return false;
+  out = {word.substr(0, at), word.substr(at + 1)};
+  return true;
+}
+
+}  // namespace
+
+int main(int argc, char** argv) {
+  CLI::App app{"Jigwright runs a production test jig and remembers which component reel went into which board."};
+  app.set_version_flag("--version", "jigwright " JIGWRIGHT_VERSION);
+  app.footer(exit_help);
+  app.require_subcommand(1);
+
+  std::string station_path;
+  std::string store;
+  app.add_option("--station", station_path, "station file (default: $JIGWRIGHT_STATION, then ./station.toml)");
+  app.add_option("--store", store, "store file (default: the station's, then results.db)");
+
+  TryOptions trying;
+  std::vector<std::string> answers;
+  auto* try_command = app.add_subcommand("try", "Try one board, or every board of an order, on the plan's jig");
+  try_command->add_option("PLAN", trying.plan, "plan file")->required();
+  auto* serial = try_command->add_option("--serial", trying.serial, "the board's serial");
+  auto* order = try_command->add_option("--order", trying.order, "every board of this order (simulated jig)");
+  serial->excludes(order);
+  try_command->add_option("--operator", trying.operator_name, "who tries, for the record");
+  try_command->add_option("--fault", trying.faults, "a fault of the simulated jig; `jigwright faults` lists them");
+  try_command->add_option("--seed", trying.seed, "seed of the simulated noise");
+  try_command->add_option("--answer", answers, "STEP=ANSWER to a question of the plan");
+  try_command->add_flag("--real-time", trying.real_time, "run on the real clock, not on virtual time");
+  try_command->add_flag("--json", trying.json,
+                        "one JSON event a line; questions are answered on standard input by {\"answer\": ...}");
+  try_command->add_flag("--quiet", trying.quiet, "only the last line");
+
+  LintOptions linting;
+  auto* lint_command = app.add_subcommand("lint", "Check plan, jig and limits, and show what the plan will do");
+  lint_command->add_option("PLAN", linting.plan, "plan file")->required();
+  lint_command->add_flag("--settings", linting.settings, "list every setting");
+  lint_command->add_flag("--json", linting.json, "as JSON");
+
+  auto* faults_command = app.add_subcommand("faults", "List the faults that --fault can give the simulated jig");
+
+  EnterOptions entering;
+  auto* enter_command = app.add_subcommand("enter", "Take in orders, boards, reels and feeds from CSV files");
+  enter_command->add_option("FILE", entering.files, "CSV files; the header tells what each holds")->required();
+
+  TraceOptions tracing;
+  auto* trace_command = app.add_subcommand("trace", "Which reels a serial carries, or which serials carry a reel");
+  auto* trace_serial = trace_command->add_option("--serial", tracing.serial, "the board's serial");
+  auto* trace_reel = trace_command->add_option("--reel", tracing.reel, "the reel's name");
+  trace_serial->excludes(trace_reel);
+  trace_command->add_flag("--csv", tracing.csv, "as CSV");
+  trace_command->add_flag("--json", tracing.json, "as JSON");
+
+  ShowOptions showing;
+  auto* show_command = app.add_subcommand("show", "A board's record: each finding, least room first");
+  show_command->add_option("SERIAL", showing.serial, "the board's serial")->required();
+  show_command->add_flag("--csv", showing.csv, "as CSV");
+  show_command->add_flag("--json", showing.json, "as JSON");
+
+  try {
+    app.parse(argc, argv);
+  } catch (const CLI::ParseError& error) {
+    return app.exit(error) == 0 ? exit_go : exit_usage;
+  }
+  for (const std::string& word : answers) {
+    trying.answers.emplace_back();
+    if (split_answer(word, trying.answers.back())) continue;
+    fmt::print(stderr, "jigwright: --answer {}: write STEP=ANSWER\n", printable(word));
+    return exit_usage;
+  }
+
+  if (*lint_command) return lint(linting);
+  if (*faults_command) return list_faults();
+
+  Faults faults;
+  const auto station = read_station(station_path, faults);
+  if (!station) {
+    fmt::print(stderr, "{}", render(faults));
+    return exit_files;
+  }
+  if (store.empty()) store = station->store;
+  if (*try_command) {
+    if (trying.serial.empty() && trying.order.empty()) {
+      fmt::print(stderr, "jigwright: try: name --serial S or --order O\n");
+      return exit_usage;
+    }
+    trying.store = store;
+    trying.station_name = station->name;
+    trying.program = "jigwright " JIGWRIGHT_VERSION;
+    return try_boards(trying);
+  }
+  entering.store = tracing.store = showing.store = store;
+  if (*enter_command) return enter(entering);
+  if (*trace_command) return trace(tracing);
+  return show(showing);
+}
