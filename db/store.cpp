@@ -50,4 +50,21 @@ Result<Done> Store::finish_trial(const OpenTrial& open, const TrialEnd& end) {
   return writer_->finish(open, end);
 }
 
+Result<std::vector<EnteredFile>> Store::enter(const std::vector<std::shared_ptr<const SourceText>>& sources,
+                                              std::int64_t now_us, Faults& faults) {
+  return enter_lists(*database_, uuids_, sources, now_us, faults);
+}
+
+Result<SerialTrace> Store::trace_serial(const std::string& serial) {
+  return jigwright::trace_serial(*database_, serial);
+}
+
+Result<ReelTrace> Store::trace_reel(const std::string& reel) {
+  return jigwright::trace_reel(*database_, reel);
+}
+
+Result<BoardShown> Store::show(const std::string& serial) {
+  return show_board(*database_, serial);
+}
+
 }  // namespace jigwright

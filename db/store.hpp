@@ -5,11 +5,12 @@
 #include <memory>
 #include <string>
 
+#include "db/enter.hpp"
+#include "db/questions.hpp"
 #include "db/trial_log.hpp"
 
 namespace jigwright {
 
-class Database;
 class TrialWriter;
 
 struct StoreOptions {
@@ -29,6 +30,15 @@ class Store final : public TrialLog {
 
   Result<OpenTrial> begin_trial(const TrialStart& start) override;
   Result<Done> finish_trial(const OpenTrial& open, const TrialEnd& end) override;
+
+  /// Takes lists of boards, reels and feeds in, all files or none: see enter.hpp.
+  Result<std::vector<EnteredFile>> enter(const std::vector<std::shared_ptr<const SourceText>>& sources,
+                                         std::int64_t now_us, Faults& faults);
+
+  /// Questions: see questions.hpp.
+  Result<SerialTrace> trace_serial(const std::string& serial);
+  Result<ReelTrace> trace_reel(const std::string& reel);
+  Result<BoardShown> show(const std::string& serial);
 
   /// For db/'s own files and their tests.
   Database& database() { return *database_; }
