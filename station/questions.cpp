@@ -63,7 +63,7 @@ std::string csv_line(const Cells& cells) {
 std::string csv_number(std::optional<double> value) {
   return value && std::isfinite(*value) ? fmt::format("{}", *value) : "";
 }
-std::string csv_number(std::optional<std::int64_t> value) {
+std::string csv_count(std::optional<std::int64_t> value) {
   return value ? std::to_string(*value) : "";
 }
 
@@ -115,7 +115,7 @@ std::string when(const BoardPlace& board) {
   return board.at_us ? utc_text(*board.at_us) : "";
 }
 std::string build_no(const BoardPlace& board) {
-  return csv_number(board.build_no);
+  return csv_count(board.build_no);
 }
 std::string count(std::int64_t n, const char* one, const char* many) {
   return fmt::format("{} {}", n, n == 1 ? one : many);
@@ -186,7 +186,7 @@ std::string csv_of(const SerialTrace& trace) {
                               "rereeled", "quantity", "marking", "how"});
   for (const Carried& c : trace.reels)
     out += csv_line({trace.board.serial, c.designator, c.reel.reel, c.reel.maker, c.reel.part, c.reel.lot,
-                     c.reel.date_code, c.reel.distributor, yes_no(c.reel.rereeled), csv_number(c.reel.quantity),
+                     c.reel.date_code, c.reel.distributor, yes_no(c.reel.rereeled), csv_count(c.reel.quantity),
                      c.reel.marking, how(c.certain)});
   return out;
 }
@@ -371,7 +371,7 @@ Cells trial_cells(const BoardShown& shown, const ShownTrial& t) {
           t.limit_set,
           std::to_string(t.limit_revision),
           t.depth,
-          csv_number(t.took_ms),
+          csv_count(t.took_ms),
           t.operator_name,
           t.station,
           std::to_string(t.nest)};
