@@ -10,42 +10,22 @@
 #include <deque>
 
 #include "base/nearest.hpp"
-#include "db/questions.hpp"
+#include "db/orders.hpp"
 #include "db/store.hpp"
 #include "fixtures/simulated/simulated_bench.hpp"
 #include "sequencer/trial.hpp"
 #include "station/commands.hpp"
 #include "station/exit_codes.hpp"
+#include "station/fail.hpp"
 #include "station/watch.hpp"
 
 namespace jigwright {
 namespace {
 
-int fail(const Error& error) {
-  fmt::print(stderr, "jigwright: {}\n", describe(error));
-  switch (error.kind) {
-    case Error::Kind::file:
-      return exit_files;
-    case Error::Kind::usage:
-      return exit_usage;
-    case Error::Kind::store:
-      return exit_store;
-    case Error::Kind::person:
-      return exit_stopped;
-    default:
-      return exit_fault;
-  }
-}
-
-std::int64_t utc_us() {
-  using namespace std::chrono;
-  return duration_cast<microseconds>(system_clock::now().time_since_epoch()).count();
-}
-
 /// The boards to try, in build order: as the store knows the order, else as the scenario does.
 Result<std::deque<std::string>> boards(const TryOptions& options, Store& store, const Scenario& scenario) {
   if (!options.serial.empty()) return std::deque<std::string>{options.serial};
-  auto known = serials_of_order(store, options.order);
+  auto known = serials_of_order(store.database(), options.order);
   if (!known) return known.error();
   std::vector<std::string> serials = std::move(known.value());
   if (serials.empty()) serials = scenario_serials(scenario, options.order);

@@ -1,0 +1,79 @@
+// `enter`, `trace`, `show` and `faults`: lists in, answers out.
+#include <fmt/format.h>
+
+#include "db/enter.hpp"
+#include "db/questions.hpp"
+#include "db/store.hpp"
+#include "fixtures/simulated/simulated_bench.hpp"
+#include "station/commands.hpp"
+#include "station/exit_codes.hpp"
+#include "station/fail.hpp"
+#include "station/questions.hpp"
+
+namespace jigwright {
+namespace {
+
+Result<std::unique_ptr<Store>> for_reading(const std::string& path) {
+  StoreOptions options;
+  options.access = StoreOptions::Access::read;
+  return Store::open(path, options);
+}
+
+Form form(bool csv, bool json) {
+  return json ? Form::json : csv ? Form::csv : Form::table;
+}
+
+template <class T>
+int print_answer(const Result<T>& answer, Form form) {
+  if (!answer.ok()) return fail(answer.error());
+  fmt::print("{}", render(answer.value(), form));
+  return exit_go;
+}
+
+}  // namespace
+
+int enter(const EnterOptions& options) {
+  std::vector<std::shared_ptr<const SourceText>> sources;
+  for (const std::string& file : options.files) {
+    auto source = read_source(file, std::size_t{256} << 20);
+    if (!source) return fail(source.error());
+    sources.push_back(std::move(source.value()));
+  }
+  auto store = Store::open(options.store);
+  if (!store) return fail(store.error());
+  Faults faults;
+  const auto entered = enter_lists(store.value()->database(), store.value()->uuids(), sources, utc_us(), faults);
+  if (!entered) return fail(entered.error());
+  fmt::print(stderr, "{}", render(faults));
+  if (faults.any()) {
+    const auto n = faults.count(Severity::fault);
+    fmt::print(stderr, "{} fault{}: nothing of these files was taken in\n", n, n == 1 ? "" : "s");
+    return exit_files;
+  }
+  fmt::print("{}", render(entered.value()));
+  return exit_go;
+}
+
+int trace(const TraceOptions& options) {
+  if (options.serial.empty() && options.reel.empty())
+    return fail({Error::Kind::usage, "trace needs a name", {}, "give --serial S or --reel R"});
+  auto store = for_reading(options.store);
+  if (!store) return fail(store.error());
+  Database& database = store.value()->database();
+  const Form as = form(options.csv, options.json);
+  return options.serial.empty() ? print_answer(trace_reel(database, options.reel), as)
+                                : print_answer(trace_serial(database, options.serial), as);
+}
+
+int show(const ShowOptions& options) {
+  auto store = for_reading(options.store);
+  if (!store) return fail(store.error());
+  return print_answer(show_board(store.value()->database(), options.serial), form(options.csv, options.json));
+}
+
+int list_faults() {
+  for (const std::string& line : fault_word_help()) fmt::print("{}\n", line);
+  return exit_go;
+}
+
+}  // namespace jigwright

@@ -1,0 +1,15 @@
+// What every command shares: an Error on standard error with its exit code, and the stamp of now.
+#pragma once
+#include <cstdint>
+
+#include "base/error.hpp"
+
+namespace jigwright {
+
+/// "jigwright: what (where): to do" on standard error; the exit code of its kind.
+int fail(const Error& error);
+
+/// UTC, microseconds since 1970.
+std::int64_t utc_us();
+
+}  // namespace jigwright
