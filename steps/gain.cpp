@@ -104,7 +104,6 @@ class GainStep final : public Step {
     join(s, jig, Role::source_to_input);
     join(s, jig, input ? Role::meter_to_input : Role::meter_to_output);
     s.source.dc_V = level_V / range.gain;
-    s.settle_s = jig.source.settle_s + context.board.settle_s;
     s.act = use_.on(input ? reads.input_range : reads.output_range);
     s.stop = Fixed{use_.readings};
     return layout_.add(std::move(s));

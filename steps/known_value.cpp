@@ -21,8 +21,8 @@ class KnownValueStep final : public Step {
     layout_ = Layout(context);
     layout_.add(setting(context, "zero", "meter's zero", Role::meter_to_zero, zero_range_));
     layout_.add(setting(context, "reference", "reference", Role::meter_to_reference, reference_range_));
-    const double zero_bound_V = accuracy_bound(zero_range_, 0) + path_emf_V;
-    const double bound_V = accuracy_bound(reference_range_, reference_V_) + path_emf_V + 2 * reference_u_V_;
+    const double zero_bound_V = accuracy_bound(zero_range_, 0) + known_path_emf_V;
+    const double bound_V = accuracy_bound(reference_range_, reference_V_) + known_path_emf_V + 2 * reference_u_V_;
     layout_.metric("meter_zero", "", Unit::volt, About::jig, -zero_bound_V, zero_bound_V);
     layout_.metric("reference_error", "", Unit::volt, About::jig, -bound_V, bound_V);
   }
@@ -55,7 +55,7 @@ class KnownValueStep final : public Step {
         .add(specified(range, sample.mean))
         .add(scatter(sample.sd, sample.n, use_.noise(range)))
         .add(rounding(range.resolution))
-        .add(rectangular(path_emf_V))
+        .add(rectangular(known_path_emf_V))
         .u();
   }
 

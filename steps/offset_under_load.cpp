@@ -157,7 +157,7 @@ class SweepMaker {
     join(s, jig_, Role::detector_to_output);
     s.source = {0, tone_V, frequency_Hz};
     const double total_F = open_F() + (load != nullptr ? load->capacitance_F : 0);
-    s.settle_s += jig_.source.settle_s + tone_settle_taus * parallel_ohm() * total_F;
+    s.settle_s += tone_settle_taus * parallel_ohm() * total_F;
     s.act = ReadDetector{std::max(keys_.detector_dwell_s, tone_periods / frequency_Hz)};
     return sweep_.layout.add(std::move(s));
   }
@@ -233,7 +233,6 @@ class SweepMaker {
     } else {
       join(s, jig_, Role::source_to_input);
       s.source.dc_V = level_V / keys_.range.gain;
-      s.settle_s += jig_.source.settle_s;
     }
     s.settle_s += load_settle_s(load, level_V);
     return s;
@@ -287,13 +286,12 @@ class SweepMaker {
     Setting off = at_level(id + "/off", shown + ": power off", load, 0);
     off.supply = {};
     off.resources |= use_supply;
-    off.settle_s = jig_.supply.settle_s +
-                   std::max(power_off_s, discharge_taus * context_.board.unpowered_ohm * charged.capacitance_F);
+    off.settle_s = std::max(power_off_s, discharge_taus * context_.board.unpowered_ohm * charged.capacitance_F);
     sweep_.layout.add(std::move(off));
     ++group_;
     Setting on = at_level(id + "/on", shown + ": warm-up", load, 0);
     on.resources |= use_supply;
-    on.settle_s = jig_.supply.settle_s + context_.board.warm_up_s;
+    on.settle_s = context_.board.warm_up_s;
     sweep_.layout.add(std::move(on));
     ++group_;
   }

@@ -72,7 +72,7 @@ class PowerUpStep final : public Step {
     Setting s = powered_setting(context, "warm-up", "warm-up");
     short_input(s, *context.jig);
     s.resources |= use_supply;
-    s.settle_s = context.jig->supply.settle_s + context.board.warm_up_s;
+    s.settle_s = context.board.warm_up_s;
     layout_.add(std::move(s));
   }
 

@@ -33,7 +33,7 @@ using StopRule = std::variant<Fixed, Stable>;
 enum class Next : std::uint8_t { more = 0, enough = 1, gave_up = 2 };  // stored; never renumbered
 
 /// Whether to take another reading. Pure, and used by player and replay alike: both must reach the same count.
-/// gave_up = `max` readings and not stable, or a reading that is not ok and won't become so (missing, refused).
+/// gave_up = `max` readings and not stable, or a reading that no later one mends (missing, refused, stale, no number).
 /// An overload ends a setting at once (enough: the finding says over range).
 Next decide(const StopRule& rule, std::span<const Reading> readings);
 

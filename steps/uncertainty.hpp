@@ -11,10 +11,12 @@
 
 namespace jigwright {
 
-/// Bounds on the thermal EMF of the relays and probes between board and meter: the whole of it, and what is left of it
-/// after the path's zero has been subtracted within one trial. Estimates; common practice, no source.
-constexpr double path_emf_V = 30e-6;
+/// Bounds on the thermal EMF of the relays and probes between board and meter: the whole of it, what is left of it
+/// after the path's zero has been subtracted within one trial, and the whole of it over the low-thermal relays of the
+/// meter's zero and reference. Estimates; common practice, no source.
+constexpr double path_emf_V = 60e-6;
 constexpr double path_emf_drift_V = 2e-6;
+constexpr double known_path_emf_V = 5e-6;
 
 /// Combines independent parts: the root of the sum of squares (5.1.2, eq. 10).
 class Combined {
