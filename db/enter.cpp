@@ -384,7 +384,8 @@ void Entering::overlap(const Stretch& a, const Stretch& b, std::int64_t from, st
   const Stretch& fresh = b.row != nullptr ? b : a;
   const Stretch& other = b.row != nullptr ? a : b;
   const FeedRow& row = *fresh.row;
-  const std::string boards = fmt::format("build numbers {} to {} of {}", from, to, row.order.text);
+  const std::string boards = from == to ? fmt::format("build number {} of {}", from, row.order.text)
+                                        : fmt::format("build numbers {} to {} of {}", from, to, row.order.text);
   const std::string there =
       fmt::format("{} stands {}", other.reel, other.row ? "at " + where(other.row->reel.region) : "in the store");
   if (fresh.reel == other.reel)

@@ -202,7 +202,7 @@ class Row {
     if (cells.size() == due) return true;
     const CsvCell& at = cells.size() > due ? cells[due] : cells.back();
     faults_.fault(
-        csv.region(at), fmt::format("this row has {} cells, and the header {}", cells.size(), due),
+        csv.region(at), fmt::format("this row has {} cells, and the header has {}", cells.size(), due),
         cells.size() > due ? "put a cell that holds a comma in quotes" : "an empty cell still needs its comma");
     return false;
   }
@@ -270,7 +270,7 @@ void check_designator(Row& row, const ListCell& designator) {
 void check_backwards(Row& row, const ListCell& at, std::string_view low, std::int64_t from, std::string_view high,
                      std::int64_t to) {
   if (from <= to) return;
-  row.fault(at, fmt::format("{} {} is above {} {}: the range runs backwards", low, from, high, to),
+  row.fault(at, fmt::format("{} ({}) is above {} ({}): the range runs backwards", low, from, high, to),
             "write the lower build number first");
 }
 

@@ -35,8 +35,13 @@ std::optional<Week> split(std::string_view code) {
   return Week{number(compact.substr(0, 4)), number(compact.substr(5))};
 }
 
-std::string advice(std::string_view code) {
+std::string advice(std::string_view code, const Week& now) {
   if (code.size() == 3 && all_digits(code)) return fmt::format("spreadsheets drop a leading zero: write \"0{}\"", code);
+  const bool four = code.size() == 4 && all_digits(code);
+  const Week turned = four ? Week{2000 + number(code.substr(2)), number(code.substr(0, 2))} : Week{};
+  if (four && turned <= now && turned.number >= 1 && turned.number <= weeks_in(turned.year))
+    return fmt::format("if this means week {} of {}, write \"{}{}\"", turned.number, turned.year, code.substr(2),
+                       code.substr(0, 2));
   return "write the label's year and week, \"2431\", or the ISO week, \"2024-W31\"";
 }
 
@@ -69,11 +74,12 @@ std::string text(const Week& week) {
 
 Result<Week> parse_date_code(std::string_view code, const Week& now) {
   const auto week = split(code);
-  if (!week) return bad(fmt::format("\"{}\" is not a date code", code), advice(code));
+  if (!week) return bad(fmt::format("\"{}\" is not a date code", code), advice(code, now));
   if (week->year < 1970 || week->number < 1 || week->number > weeks_in(week->year))
     return bad(fmt::format("\"{}\" names no week: {} has weeks 1 to {}", code, week->year, weeks_in(week->year)),
-               advice(code));
-  if (*week > now) return bad(fmt::format("\"{}\" lies in the future: this is week {}", code, text(now)), advice(code));
+               advice(code, now));
+  if (*week > now)
+    return bad(fmt::format("\"{}\" lies in the future: this is week {}", code, text(now)), advice(code, now));
   return *week;
 }
 
