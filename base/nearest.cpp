@@ -25,13 +25,24 @@ int edit_distance(std::string_view a, std::string_view b) {
   return d.back();
 }
 
+namespace {
+
+std::string without_spaces(std::string_view text) {
+  std::string out(text);
+  std::erase(out, ' ');
+  return out;
+}
+
+}  // namespace
+
 std::optional<std::string> nearest(std::string_view word, std::span<const std::string> known) {
   if (word.size() > 80) return std::nullopt;
   const std::string* best = nullptr;
   int least = 0;
   for (const std::string& k : known) {
     if (k.size() > 80) continue;
-    const int distance = edit_distance(word, k);
+    const bool same_but_spaces = edit_distance(without_spaces(word), without_spaces(k)) == 0;
+    const int distance = same_but_spaces ? 0 : edit_distance(word, k);
     if (best == nullptr || distance < least) {
       best = &k;
       least = distance;
@@ -44,6 +55,7 @@ std::optional<std::string> nearest(std::string_view word, std::span<const std::s
 }
 
 std::string listed(std::span<const std::string> words) {
+  if (words.empty()) return "none";
   std::string out;
   for (const std::string& w : words) out += (out.empty() ? "" : ", ") + w;
   return out;

@@ -103,6 +103,13 @@ std::string unit_advice(std::string_view word) {
   return "units are V, A, ohm, F, s, Hz, K, degC, V/V, ppm, %, with the prefixes f p n u m k M G T";
 }
 
+std::string with_point(std::string_view text) {
+  if (std::count(text.begin(), text.end(), ',') > 1) return "write the number without commas";
+  std::string out(text);
+  out[out.find(',')] = '.';
+  return fmt::format("write a decimal point, as in \"{}\"", out);
+}
+
 }  // namespace
 
 std::string_view symbol(Unit unit) {
@@ -136,7 +143,7 @@ Result<Quantity> parse_quantity(std::string_view text) {
     return bad(fmt::format("\"{}\" does not begin with a number", whole),
                "write a number and a unit, as in \"0.5 mV\"");
   std::string_view unit = digits.substr(static_cast<std::size_t>(end - digits.data()));
-  if (unit.starts_with(',')) return bad(fmt::format("\"{}\" has a decimal comma", whole), "write a decimal point");
+  if (unit.starts_with(',')) return bad(fmt::format("\"{}\" has a decimal comma", whole), with_point(whole));
   unit = trim(unit);
   if (unit.empty()) return Quantity{number, Unit::count};
   const auto scaled = scaled_unit(unit);

@@ -59,6 +59,20 @@ std::string excerpt(const SourceRegion& region) {
          std::string(carets, '^') + "\n";
 }
 
+/// Lines of at most `widest` characters, broken at spaces, each indented by two.
+std::string wrapped(std::string_view text) {
+  std::string out;
+  while (characters(text) > widest) {
+    const std::size_t end = byte_of(text, widest);
+    const std::size_t space = text.substr(0, end).rfind(' ');
+    const std::size_t cut = space == std::string_view::npos || space == 0 ? end : space;
+    out += "  " + std::string(text.substr(0, cut)) + "\n";
+    text.remove_prefix(cut);
+    while (text.starts_with(' ')) text.remove_prefix(1);
+  }
+  return out + "  " + std::string(text) + "\n";
+}
+
 }  // namespace
 
 std::string where(const SourceRegion& region) {
@@ -107,6 +121,13 @@ void Faults::note(SourceRegion region, std::string what, std::string to_do) {
   add(Severity::note, std::move(region), std::move(what), std::move(to_do));
 }
 
+void Faults::replace(std::size_t index, SourceRegion region, std::string what, std::string to_do) {
+  Fault& f = list_.at(index);
+  f.region = std::move(region);
+  f.what = std::move(what);
+  f.to_do = std::move(to_do);
+}
+
 std::size_t Faults::count(Severity severity) const {
   return static_cast<std::size_t>(
       std::count_if(list_.begin(), list_.end(), [&](const Fault& f) { return f.severity == severity; }));
@@ -119,7 +140,7 @@ std::string render(const Fault& fault) {
   if (fault.severity == Severity::note) out += "note: ";
   out += printable(fault.what) + "\n";
   if (fault.region.source && fault.region.line > 0) out += excerpt(fault.region);
-  if (!fault.to_do.empty()) out += "  " + printable(fault.to_do) + "\n";
+  if (!fault.to_do.empty()) out += wrapped(printable(fault.to_do));
   return out;
 }
 
@@ -139,7 +160,12 @@ std::string render(const Faults& faults) {
     return a->region.column < b->region.column;
   });
   std::string out;
-  for (const Fault* f : sorted) out += render(*f);
+  std::string before;
+  for (const Fault* f : sorted) {
+    std::string text = render(*f);
+    if (text != before) out += text;
+    before = std::move(text);
+  }
   return out;
 }
 

@@ -47,6 +47,8 @@ class Faults {
   void fault(SourceRegion region, std::string what, std::string to_do = {});
   void warning(SourceRegion region, std::string what, std::string to_do = {});
   void note(SourceRegion region, std::string what, std::string to_do = {});
+  /// Puts a better fault in the place of one that was added, by its index in all().
+  void replace(std::size_t index, SourceRegion region, std::string what, std::string to_do = {});
   bool any() const { return faults_ > 0; }  ///< a true fault, not a warning or note
   std::size_t count(Severity severity) const;
   const std::vector<Fault>& all() const { return list_; }
@@ -62,10 +64,12 @@ class Faults {
 ///       loads = ["open", "100 pF", "100n"]
 ///                                  ^^^^^^
 ///       the jig has: open, 47 pF, 100 pF, 1 nF, 100 nF; write "100 nF"
-/// A warning or note says so behind the place. Lines are cut to about 100 characters round the stretch.
+/// A warning or note says so behind the place. Lines are cut to about 100 characters round the stretch, and advice is
+/// wrapped at that width.
 std::string render(const Fault& fault);
 
-/// All of them sorted by file (in order of first mention), line and column; a summary line at the end is the caller's.
+/// All of them sorted by file (in order of first mention), line and column, each told once; a summary line at the end
+/// is the caller's.
 std::string render(const Faults& faults);
 
 }  // namespace jigwright

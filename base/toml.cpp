@@ -14,16 +14,30 @@ namespace {
 
 using Source = std::shared_ptr<const SourceText>;
 
+/// A file's text with the place of each line, so that finding one costs no search.
+class Lines {
+ public:
+  explicit Lines(Source source) : source_(std::move(source)) {
+    begins_.push_back(0);
+    for (std::size_t at = 0; at < source_->text.size(); ++at)
+      if (source_->text[at] == '\n') begins_.push_back(at + 1);
+  }
+  /// From 1; empty beyond the end.
+  std::string_view line(unsigned number) const {
+    if (number < 1 || number > begins_.size()) return {};
+    const std::string_view rest = std::string_view(source_->text).substr(begins_[number - 1]);
+    return rest.substr(0, rest.find('\n'));
+  }
+  const Source& source() const { return source_; }
+
+ private:
+  Source source_;
+  std::vector<std::size_t> begins_;
+};
+
 /// Length in characters of the value or key that begins at this place, for the caret: a quoted text to its closing
 /// quote, a bracket to its match on the line, else up to the next separator.
-int stretch(const SourceText& source, unsigned line, unsigned column) {
-  std::string_view text = source.text;
-  for (unsigned at = 1; at < line; ++at) {
-    const auto end = text.find('\n');
-    if (end == std::string_view::npos) return 1;
-    text.remove_prefix(end + 1);
-  }
-  text = text.substr(0, text.find('\n'));
+int stretch(std::string_view text, unsigned column) {
   std::size_t at = 0;
   auto step = [&] {
     ++at;
@@ -60,10 +74,10 @@ int stretch(const SourceText& source, unsigned line, unsigned column) {
   return std::max(1, length);
 }
 
-SourceRegion region_of(const Source& source, const toml::source_region& at) {
+SourceRegion region_of(const Lines& lines, const toml::source_region& at) {
   const auto line = static_cast<unsigned>(at.begin.line);
   const auto column = static_cast<unsigned>(at.begin.column);
-  return {source, static_cast<int>(line), static_cast<int>(column), stretch(*source, line, column)};
+  return {lines.source(), static_cast<int>(line), static_cast<int>(column), stretch(lines.line(line), column)};
 }
 
 template <class T>
@@ -73,12 +87,12 @@ std::string printed(const T& value) {
   return out.str();
 }
 
-Node convert(const toml::node& from, const Source& source);
+Node convert(const toml::node& from, const Lines& lines);
 
-Table convert_table(const toml::table& from, const Source& source) {
+Table convert_table(const toml::table& from, const Lines& lines) {
   std::vector<Member> members;
   for (const auto& [key, value] : from)
-    members.push_back({std::string(key.str()), region_of(source, key.source()), convert(value, source)});
+    members.push_back({std::string(key.str()), region_of(lines, key.source()), convert(value, lines)});
   std::stable_sort(members.begin(), members.end(), [](const Member& a, const Member& b) {
     if (a.key_region.line != b.key_region.line) return a.key_region.line < b.key_region.line;
     return a.key_region.column < b.key_region.column;
@@ -86,9 +100,9 @@ Table convert_table(const toml::table& from, const Source& source) {
   return members;
 }
 
-Node convert(const toml::node& from, const Source& source) {
+Node convert(const toml::node& from, const Lines& lines) {
   Node out;
-  out.region = region_of(source, from.source());
+  out.region = region_of(lines, from.source());
   if (const auto* s = from.as_string()) {
     out.value = s->get();
   } else if (const auto* i = from.as_integer()) {
@@ -99,10 +113,10 @@ Node convert(const toml::node& from, const Source& source) {
     out.value = b->get();
   } else if (const auto* a = from.as_array()) {
     Array items;
-    for (const auto& item : *a) items.push_back(convert(item, source));
+    for (const auto& item : *a) items.push_back(convert(item, lines));
     out.value = std::move(items);
   } else if (const auto* t = from.as_table()) {
-    out.value = convert_table(*t, source);
+    out.value = convert_table(*t, lines);
   } else {
     out.is_date = true;
     if (const auto* date = from.as_date()) out.value = printed(*date);
@@ -112,11 +126,63 @@ Node convert(const toml::node& from, const Source& source) {
   return out;
 }
 
+struct Syntax {
+  std::string what;
+  std::string to_do;
+};
+
+void exchange(std::string& text, std::string_view from, std::string_view to) {
+  for (auto at = text.find(from); at != std::string::npos; at = text.find(from, at + to.size()))
+    text.replace(at, from.size(), to);
+}
+
+/// What stands between the first two apostrophes.
+std::string quoted_in(const std::string& text) {
+  const auto begin = text.find('\'');
+  const auto end = text.find('\'', begin + 1);
+  return begin == std::string::npos || end == std::string::npos ? "" : text.substr(begin + 1, end - begin - 1);
+}
+
+/// The parser's words, made plain for the slips that people make. Words that it may change fall through as they are.
+Syntax in_plain_words(std::string words, std::string_view line) {
+  auto says = [&](std::string_view part) { return words.find(part) != std::string::npos; };
+  const std::string_view opening = "Error while parsing ";
+  if (says("cannot redefine existing table"))
+    return {fmt::format("the table [{}] is there twice", quoted_in(words)), "join the two, or rename one"};
+  if (says("cannot redefine")) return {fmt::format("\"{}\" is there twice", quoted_in(words)), "keep one of them"};
+  if (says("control characters") && says("string"))
+    return {"a quote is not closed", "close it on the line where it opens"};
+  if (says("could not determine value type"))
+    return {"this is no value", "write a text in quotes, a number, true, false, [ ... ] or { ... }"};
+  if (says("expected a comment or whitespace"))
+    return {"something follows the value", line.find('=') == std::string_view::npos
+                                               ? "one thing a line; a comment begins with #"
+                                               : "one value a line; a quantity stands in quotes, as in \"0.5 mV\""};
+  if (words.starts_with(opening)) words = "while reading " + words.substr(opening.size());
+  exchange(words, "key-value pair", "a key and its value");
+  exchange(words, "saw '\\n'", "found the end of the line");
+  exchange(words, "saw '\\r'", "found the end of the line");
+  exchange(words, "saw ", "found ");
+  exchange(words, "while reading table header", "while reading the [header] of a table");
+  exchange(words, "while reading inline table", "while reading a table in { }");
+  return {words, "mend this"};
+}
+
 /// A finite number, whole or not.
 std::optional<double> number_of(const Node& node) {
   if (const auto* i = std::get_if<std::int64_t>(&node.value)) return static_cast<double>(*i);
   const auto* d = std::get_if<double>(&node.value);
   return d != nullptr && std::isfinite(*d) ? std::optional(*d) : std::nullopt;
+}
+
+std::string example_of(Unit unit) {
+  if (unit == Unit::count) return "a number";
+  return fmt::format("\"... {}\"", unit == Unit::ratio ? "ppm" : symbol(unit));
+}
+
+/// Ratios in per cent: what is usual is a round figure.
+std::string usual_text(double value, Unit unit) {
+  return unit == Unit::ratio ? fmt::format("{:g} %", value * 100) : format_quantity(value, unit);
 }
 
 }  // namespace
@@ -129,7 +195,7 @@ std::string_view Node::kind_name() const {
     case 1:
       return "a whole number";
     case 2:
-      return "a number";
+      return number_of(*this) ? "a decimal number" : "no finite number";
     case 3:
       return "true or false";
     case 4:
@@ -146,17 +212,17 @@ const Node* find(const Table& table, std::string_view key) {
 }
 
 std::optional<Node> parse_toml(Source source, Faults& faults) {
+  const Lines lines(source);
   try {
     const toml::table table = toml::parse(source->text, source->name);
     Node root;
     root.region = {source, 0, 0, 1};
-    root.value = convert_table(table, source);
+    root.value = convert_table(table, lines);
     return root;
   } catch (const toml::parse_error& e) {
-    std::string what(e.description());
-    const std::string_view opening = "Error while parsing ";
-    if (what.starts_with(opening)) what = "while reading " + what.substr(opening.size());
-    faults.fault(region_of(source, e.source()), "not valid TOML: " + what, "nothing below this line was read");
+    const Syntax syntax = in_plain_words(std::string(e.description()), lines.line(e.source().begin.line));
+    faults.fault(region_of(lines, e.source()), "not valid TOML: " + syntax.what,
+                 syntax.to_do + "; nothing below this line was read");
     return std::nullopt;
   }
 }
@@ -186,6 +252,7 @@ const Node* TableReader::node(std::string_view key) {
 }
 
 void TableReader::missing(std::string_view key, std::string_view expected) {
+  missing_.push_back({std::string(key), faults_.all().size()});
   fault(node_.region, fmt::format("\"{}\" is missing", key), fmt::format("add {} = {}", key, expected));
 }
 
@@ -216,10 +283,7 @@ std::optional<Located<double>> TableReader::read_quantity(const Node& n, std::st
   if (unit == Unit::count)
     if (const auto number = number_of(n)) return Located<double>{*number, n.region};
   if (n.text() == nullptr || n.is_date) {
-    const bool number = n.value.index() == 1 || n.value.index() == 2;
-    fault(n.region,
-          fmt::format("\"{}\": expected {} as a text with its unit, found {}", key, quantity_name(unit), n.kind_name()),
-          number ? "write the number with its unit in quotes" : "");
+    no_quantity(n, key, unit);
     return std::nullopt;
   }
   auto q = parse_quantity(*n.text(), unit);
@@ -227,18 +291,30 @@ std::optional<Located<double>> TableReader::read_quantity(const Node& n, std::st
     fault(n.region, fmt::format("\"{}\": {}", key, q.error().what), q.error().to_do);
     return std::nullopt;
   }
-  const double v = q.value();
-  if (plausible && (v < plausible->low || v > plausible->high)) {
-    auto inside = [&](double x) { return x >= plausible->low && x <= plausible->high; };
-    std::string hint =
-        fmt::format("usual is {} to {}", format_quantity(plausible->low, unit), format_quantity(plausible->high, unit));
-    if (n.text()->find('m') != std::string::npos && inside(v * 1e9))
-      hint += fmt::format("; m is milli, for mega write M: \"{}\"", format_quantity(v * 1e9, unit));
-    if (n.text()->find('M') != std::string::npos && inside(v / 1e9))
-      hint += fmt::format("; M is mega, for milli write m: \"{}\"", format_quantity(v / 1e9, unit));
-    warning(n.region, fmt::format("\"{}\": {} is unusual", key, format_quantity(v, unit)), hint);
-  }
-  return Located<double>{v, n.region};
+  if (plausible) doubt(n, key, q.value(), unit, *plausible);
+  return Located<double>{q.value(), n.region};
+}
+
+void TableReader::no_quantity(const Node& n, std::string_view key, Unit unit) {
+  const auto number = number_of(n);
+  if (!number || unit == Unit::count) return wrong_kind(key, n, quantity_name(unit));
+  const std::string_view word = unit == Unit::ratio ? "ppm" : symbol(unit);
+  fault(n.region, fmt::format("\"{}\": {} has no unit, expected {}", key, *number, quantity_name(unit)),
+        fmt::format("write it with its unit in quotes, as in \"{} {}\"", *number, word));
+}
+
+void TableReader::doubt(const Node& n, std::string_view key, double v, Unit unit, Plausible usual) {
+  auto inside = [&](double x) { return x >= usual.low && x <= usual.high; };
+  if (inside(v)) return;
+  const std::string& text = *n.text();
+  std::string hint = usual.low == 0
+                         ? fmt::format("usual is at most {}", usual_text(usual.high, unit))
+                         : fmt::format("usual is {} to {}", usual_text(usual.low, unit), usual_text(usual.high, unit));
+  if (text.find('m') != std::string::npos && inside(v * 1e9))
+    hint += fmt::format("; m is milli, for mega write M: \"{}\"", format_quantity(v * 1e9, unit));
+  if (text.find('M') != std::string::npos && inside(v / 1e9))
+    hint += fmt::format("; M is mega, for milli write m: \"{}\"", format_quantity(v / 1e9, unit));
+  warning(n.region, fmt::format("\"{}\": \"{}\" is unusual", key, text), hint);
 }
 
 std::optional<Located<double>> TableReader::quantity(std::string_view key, Unit unit,
@@ -249,25 +325,32 @@ std::optional<Located<double>> TableReader::quantity(std::string_view key, Unit 
 }
 
 Located<double> TableReader::need_quantity(std::string_view key, Unit unit, std::optional<Plausible> plausible) {
-  if (ask(key) == nullptr) missing(key, fmt::format("\"... {}\"", symbol(unit)));
+  if (ask(key) == nullptr) missing(key, example_of(unit));
   return quantity(key, unit, plausible).value_or(Located<double>{0, node_.region});
 }
 
 Located<double> TableReader::need_positive(std::string_view key, Unit unit, std::optional<Plausible> plausible) {
-  const bool there = has(key);
-  const auto got = there ? quantity(key, unit, plausible) : need_quantity(key, unit, plausible);
-  if (there && got && !(got->value > 0))
-    fault(got->region,
-          fmt::format("\"{}\": expected more than zero, found {}", key, format_quantity(got->value, unit)));
-  return got.value_or(Located<double>{0, node_.region});
+  return need_signed(
+      key, unit, plausible, [](double v) { return v > 0; }, "more than zero");
 }
 
 Located<double> TableReader::need_not_negative(std::string_view key, Unit unit, std::optional<Plausible> plausible) {
-  const bool there = has(key);
-  const auto got = there ? quantity(key, unit, plausible) : need_quantity(key, unit, plausible);
-  if (there && got && !(got->value >= 0))
-    fault(got->region, fmt::format("\"{}\": expected zero or more, found {}", key, format_quantity(got->value, unit)));
-  return got.value_or(Located<double>{0, node_.region});
+  return need_signed(
+      key, unit, plausible, [](double v) { return v >= 0; }, "zero or more");
+}
+
+Located<double> TableReader::need_signed(std::string_view key, Unit unit, std::optional<Plausible> plausible,
+                                         bool (*allowed)(double), std::string_view expected) {
+  const Node* n = ask(key);
+  if (n == nullptr) return need_quantity(key, unit);
+  const auto got = read_quantity(*n, key, unit, std::nullopt);
+  if (!got) return {0, node_.region};
+  if (!allowed(got->value))
+    fault(got->region, fmt::format("\"{}\": expected {}, found {}", key, expected,
+                                   n->text() != nullptr ? "\"" + *n->text() + "\"" : fmt::format("{}", got->value)));
+  else if (plausible && n->text() != nullptr)
+    doubt(*n, key, got->value, unit, *plausible);
+  return *got;
 }
 
 std::optional<Located<std::int64_t>> TableReader::integer(std::string_view key, std::int64_t low, std::int64_t high) {
@@ -313,7 +396,7 @@ std::optional<Located<std::string>> TableReader::choice(std::string_view key, co
 }
 
 Located<std::string> TableReader::need_choice(std::string_view key, const std::vector<std::string>& words) {
-  if (ask(key) == nullptr) missing(key, fmt::format("one of: {}", listed(words)));
+  if (ask(key) == nullptr) missing(key, fmt::format("\"...\", one of: {}", listed(words)));
   return choice(key, words).value_or(Located<std::string>{words.empty() ? "" : words.front(), node_.region});
 }
 
@@ -382,7 +465,11 @@ const Node* TableReader::table(std::string_view key) {
 }
 
 const Node* TableReader::need_table(std::string_view key) {
-  if (ask(key) == nullptr) fault(node_.region, fmt::format("the table [{}] is missing", key));
+  if (ask(key) == nullptr) {
+    missing_.push_back({std::string(key), faults_.all().size()});
+    fault(node_.region, fmt::format("the table [{}] is missing", key),
+          fmt::format("add a line [{}] and its keys", key));
+  }
   return table(key);
 }
 
@@ -406,12 +493,19 @@ std::vector<const Node*> TableReader::tables(std::string_view key) {
 void TableReader::finish() {
   const Table* table = node_.table();
   if (table == nullptr) return;
-  for (const Member& m : *table) {
-    if (std::find(known_.begin(), known_.end(), m.key) != known_.end()) continue;
-    const auto near = nearest(m.key, known_);
-    fault(m.key_region, fmt::format("unknown key \"{}\"", m.key),
-          near ? fmt::format("write {}", *near) : fmt::format("known keys here: {}", listed(known_)));
-  }
+  for (const Member& m : *table)
+    if (std::find(known_.begin(), known_.end(), m.key) == known_.end()) unknown(m);
+}
+
+/// A misspelt key is told once: not also as the missing one that it was meant to be.
+void TableReader::unknown(const Member& m) {
+  const auto near = nearest(m.key, known_);
+  const std::string what = (about_.empty() ? "" : about_ + ": ") + fmt::format("unknown key \"{}\"", m.key);
+  const std::string to_do = near ? fmt::format("write {}", *near) : fmt::format("known keys here: {}", listed(known_));
+  const auto meant = std::find_if(missing_.begin(), missing_.end(), [&](const Missing& a) { return a.key == near; });
+  if (meant == missing_.end()) return faults_.fault(m.key_region, what, to_do);
+  faults_.replace(meant->index, m.key_region, what, to_do);
+  missing_.erase(meant);
 }
 
 }  // namespace jigwright

@@ -107,6 +107,15 @@ class TableReader {
   const Node* ask(std::string_view key);
   void missing(std::string_view key, std::string_view expected);
   void wrong_kind(std::string_view key, const Node& found, std::string_view expected);
+  struct Missing {
+    std::string key;
+    std::size_t index;  ///< of its fault
+  };
+  void unknown(const Member& member);
+  void no_quantity(const Node& found, std::string_view key, Unit unit);
+  void doubt(const Node& found, std::string_view key, double value, Unit unit, Plausible usual);
+  Located<double> need_signed(std::string_view key, Unit unit, std::optional<Plausible> plausible,
+                              bool (*allowed)(double), std::string_view expected);
   std::optional<Located<double>> read_quantity(const Node& node, std::string_view key, Unit unit,
                                                std::optional<Plausible> plausible);
 
@@ -114,6 +123,7 @@ class TableReader {
   std::string about_;
   Faults& faults_;
   std::vector<std::string> known_;
+  std::vector<Missing> missing_;
 };
 
 }  // namespace jigwright

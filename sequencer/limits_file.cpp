@@ -77,8 +77,10 @@ class EntryReader {
     if (!unit_) {
       unit_ = entry_.unit = q->value.unit;
       unit_from_ = key;
+      unit_region_ = q->region;
     }
     if (q->value.unit == *unit_) return q->value.value;
+    if (*unit_ == Unit::count) return first_without_unit(key, *q);
     r.fault(q->region,
             fmt::format("\"{}\": expected {} as in \"{}\", found {}", key, quantity_name(*unit_), unit_from_,
                         quantity_name(q->value.unit)),
@@ -86,12 +88,24 @@ class EntryReader {
     return std::nullopt;
   }
 
+  /// The first quantity is a bare number and this one is not: the first wants the unit.
+  std::optional<double> first_without_unit(std::string_view key, const Located<Quantity>& q) {
+    r_.fault(unit_region_,
+             fmt::format("\"{}\" has no unit, but \"{}\" is {}", unit_from_, key, quantity_name(q.value.unit)),
+             fmt::format("write the unit, as in \"1.5 {}\"", symbol(q.value.unit)));
+    unit_ = entry_.unit = q.value.unit;
+    unit_from_ = key;
+    unit_region_ = q.region;
+    return q.value.value;
+  }
+
   void read_nominal() {
     if (!r_.has("nominal")) return;
     const auto nominal = agreeing(r_, "nominal");
     if (!nominal) return;
     const Bounds& s = entry_.limit.specification;
-    if ((s.low && *nominal < *s.low) || (s.high && *nominal > *s.high))
+    const bool crossed = s.low && s.high && *s.low > *s.high;
+    if (!crossed && ((s.low && *nominal < *s.low) || (s.high && *nominal > *s.high)))
       r_.fault(r_.node("nominal")->region,
                fmt::format("the nominal {} lies outside the specification", format_quantity(*nominal, entry_.unit, 6)),
                "the nominal is what a perfect board shows");
@@ -193,7 +207,7 @@ class EntryReader {
 
   TableReader r_;
   LimitEntry entry_;
-  SourceRegion specification_, test_;
+  SourceRegion specification_, test_, unit_region_;
   std::optional<Unit> unit_;
   std::string_view unit_from_;
   bool known_guard_{true};

@@ -85,24 +85,24 @@ class PlanReader {
     const auto rail = r.need_positive("rail", Unit::volt, rail_V);
     const auto limit = r.need_positive("current_limit", Unit::ampere, limit_A);
     const auto swing = r.need_positive("swing", Unit::volt);
-    b.rail_V = rail.value;
-    b.limit_A = limit.value;
     b.swing_V = swing.value;
     if (rail.value > 0 && swing.value >= rail.value)
       r.fault(swing.region,
               fmt::format("\"swing\": {} is not below the rail of {}", format_quantity(swing.value, Unit::volt),
                           format_quantity(rail.value, Unit::volt)),
               "no output reaches its own supply: write the largest output that the board must deliver");
-    if (!jig_) return;
-    check_reach(r, "rail", rail, jig_->supply.max_V, Unit::volt);
-    check_reach(r, "current_limit", limit, jig_->supply.max_A, Unit::ampere);
+    b.rail_V = jig_ ? within_reach(r, "rail", rail, jig_->supply.max_V, Unit::volt) : rail.value;
+    b.limit_A = jig_ ? within_reach(r, "current_limit", limit, jig_->supply.max_A, Unit::ampere) : limit.value;
   }
 
-  static void check_reach(TableReader& r, std::string_view key, const Located<double>& asked, double most, Unit unit) {
-    if (!(most > 0) || asked.value <= most) return;
+  /// What is asked; after a fault the most that there is, so that steps need not tell it again.
+  static double within_reach(TableReader& r, std::string_view key, const Located<double>& asked, double most,
+                             Unit unit) {
+    if (!(most > 0) || asked.value <= most) return asked.value;
     r.fault(asked.region,
             fmt::format("\"{}\": {} is more than the jig's supply gives", key, format_quantity(asked.value, unit)),
             fmt::format("its most is {}", format_quantity(most, unit)));
+    return most;
   }
 
   void read_ranges(TableReader& board) {
@@ -114,7 +114,8 @@ class PlanReader {
     for (const Node* table : tables) {
       TableReader r(*table, "[[board.range]]", faults_);
       const auto id = read_id(r, "range", seen);
-      plan_.board.ranges.push_back({id.value, read_gain(r), id.region});
+      const double gain = read_gain(r);
+      if (plan_.board.range(id.value) == nullptr) plan_.board.ranges.push_back({id.value, gain, id.region});
       r.finish();
     }
     check_default_range();
@@ -148,7 +149,6 @@ class PlanReader {
   }
 
   void no_relay(const BoardFacts::Range& range, const BoardFacts::Range& first) {
-    if (range.id == first.id) return;  // told as a double already
     const auto known = jig_->range_ids();
     const auto near = nearest(range.id, known);
     faults_.fault(
@@ -289,14 +289,14 @@ void check_time(const ReadyPlan& ready, const Node& root, Faults& faults) {
                "every trial would be VOID: raise time_limit, or ask less of the plan");
 }
 
-/// Expands what was read. With faults in the limits, only true faults of the match are worth telling.
+/// Expands what was read. Notes on metrics without a limit are worth telling only when no limit is at fault.
 void expand(ReadyPlan& ready, bool limits_sound, Faults& faults) {
   Faults found;
   ready.full = expand_plan(ready.plan, *ready.jig, ready.limits, Depth::full, found);
   for (const Fault& f : found.all()) {
     if (f.severity == Severity::fault) faults.fault(f.region, f.what, f.to_do);
     if (f.severity == Severity::warning) faults.warning(f.region, f.what, f.to_do);
-    if (f.severity == Severity::note && limits_sound) faults.note(f.region, f.what, f.to_do);
+    if (f.severity == Severity::note && limits_sound && !found.any()) faults.note(f.region, f.what, f.to_do);
   }
 }
 
