@@ -110,6 +110,7 @@ class Database {
   std::int64_t last_id() const;
   std::int64_t changes() const;
   const std::string& path() const { return path_; }
+  sqlite3* handle() { return handle_; }  ///< for tests that look at the statements
 
   bool failed() const { return error_.has_value(); }
   const Error& error() const { return *error_; }
