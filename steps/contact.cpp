@@ -1,6 +1,6 @@
 // Kind "contact": the loop of force and sense pin over each pad, in ohm, before anything else touches the board. About
 // 0 V is what a perfect offset looks like and also what an open probe looks like: so every probe of the jig is read.
-// Keys: probes (all; leaving one out is a fault), max ("5 ohm"), readings (1), integration_cycles (1).
+// Keys: probes (all; leaving one out is a fault), max ("5 ohm"), readings (2), integration_cycles (1).
 #include <fmt/format.h>
 
 #include <algorithm>
@@ -112,7 +112,7 @@ std::unique_ptr<Step> read_contact(TableReader& reader, const StepContext& conte
   if (context.jig) check_loops(reader, *context.jig, probes);
   const auto most = reader.quantity("max", Unit::ohm, Plausible{0.05, 100});
   if (most && !(most->value > 0)) reader.fault(most->region, "\"max\" must be more than 0 ohm", "write \"5 ohm\"");
-  const MeterUse use = read_meter_use(reader, context, 1);
+  const MeterUse use = read_meter_use(reader, context, 2);
   if (clean.ok()) step->lay_out(context, probes, most ? most->value : 5.0, use);
   return step;
 }

@@ -1,7 +1,7 @@
 // Kind "power-up": the resistance of each rail to ground without power, so that a short is found before current flows;
 // then power with the board's current limit, its warm-up, and each rail at the board's own pad by the meter.
 // Keys: rail_settle (ten times the board's settling: rail capacitors charge from the meter's test current), readings
-// (2), integration_cycles (1).
+// (4), integration_cycles (1).
 #include <fmt/format.h>
 
 #include <array>
@@ -127,7 +127,7 @@ std::unique_ptr<Step> read_power_up(TableReader& reader, const StepContext& cont
   need_role(reader, context, Role::supply_to_board);
   check_supply(reader, context);
   const auto settle = reader.quantity("rail_settle", Unit::second, Plausible{1e-4, 5});
-  const MeterUse use = read_meter_use(reader, context, 2);
+  const MeterUse use = read_meter_use(reader, context, 4);
   if (clean.ok()) step->lay_out(context, settle ? settle->value : 10 * context.board.settle_s, use);
   return step;
 }

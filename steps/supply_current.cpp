@@ -1,5 +1,5 @@
 // Kind "supply-current": the current that the board takes from each rail, by the supply's own read-back, input shorted,
-// no load. Keys: readings (3).
+// no load. Keys: readings (5).
 #include <array>
 
 #include "steps/common.hpp"
@@ -57,7 +57,7 @@ std::unique_ptr<Step> read_supply_current(TableReader& reader, const StepContext
   auto step = std::make_unique<SupplyCurrentStep>();
   need_role(reader, context, Role::supply_to_board);
   const auto readings = reader.integer("readings", 1, 200);
-  if (clean.ok()) step->lay_out(context, readings ? static_cast<int>(readings->value) : 3);
+  if (clean.ok()) step->lay_out(context, readings ? static_cast<int>(readings->value) : 5);
   return step;
 }
 
