@@ -29,7 +29,8 @@ struct Error {
 /// "what (where): to do", one line, control characters replaced.
 std::string describe(const Error& error);
 
-/// The text with control characters (and DEL) replaced by '?', so that input can't drive a terminal.
+/// The text with control characters (C0, DEL, C1, those that turn the direction of writing) and bytes that are no UTF-8
+/// replaced by '?', so that input can't drive a terminal.
 std::string printable(std::string_view text);
 
 struct Done {};

@@ -97,9 +97,12 @@ std::string unit_advice(std::string_view word) {
     for (const Prefix& p : prefixes)
       if (static_cast<unsigned char>(p.text[0]) < 0x80) known.push_back(std::string(p.text) + std::string(row.symbol));
   }
-  // The same letters in another case come first: "mv" means mV sooner than V.
+  // The same letters in another case come first: "mv" means mV sooner than V. "MOHM" may mean either.
+  std::string same;
   for (const std::string& k : known)
-    if (edit_distance(word, k) == 0) return fmt::format("write \"{}\"", k);
+    if (edit_distance(word, k) == 0 && !(word[0] == 'm' && k[0] == 'M'))
+      same += fmt::format("{}\"{}\"", same.empty() ? "write " : " or ", k);
+  if (!same.empty()) return same;
   return "units are V, A, ohm, F, s, Hz, K, degC, V/V, ppm, %, with the prefixes f p n u m k M G T";
 }
 
@@ -135,7 +138,7 @@ Result<Quantity> parse_quantity(std::string_view text) {
   };
   text = trim(text);
   std::string_view digits = text;
-  if (digits.starts_with('+')) digits.remove_prefix(1);
+  if (digits.starts_with('+') && !digits.starts_with("+-")) digits.remove_prefix(1);
   double number = 0;
   const auto [end, fault] = std::from_chars(digits.data(), digits.data() + digits.size(), number);
   if (fault == std::errc::result_out_of_range) return bad(fmt::format("\"{}\" is out of range", whole), {});
@@ -148,6 +151,7 @@ Result<Quantity> parse_quantity(std::string_view text) {
   if (unit.empty()) return Quantity{number, Unit::count};
   const auto scaled = scaled_unit(unit);
   if (!scaled) return bad(fmt::format("unknown unit \"{}\" in \"{}\"", unit, whole), unit_advice(unit));
+  if (!std::isfinite(number * scaled->factor)) return bad(fmt::format("\"{}\" is out of range", whole), {});
   return Quantity{number * scaled->factor, scaled->unit};
 }
 
@@ -185,6 +189,15 @@ std::string scaled_text(double value, double factor, int significant) {
     if (out.back() == '.') out.pop_back();
   }
   return out == "-0" ? "0" : out;
+}
+
+/// To this many digits: the prefix is chosen for what will be shown, "1 mV" and not "1000 uV".
+double rounded(double value, int significant) {
+  if (!std::isfinite(value)) return value;
+  const std::string text = fmt::format("{:.{}e}", value, std::clamp(significant - 1, 0, 16));
+  double out = value;
+  std::from_chars(text.data(), text.data() + text.size(), out);
+  return out;
 }
 
 struct Shown {
@@ -226,7 +239,7 @@ std::string format_like(double value, double scale, Unit unit, int significant) 
 }
 
 std::string format_quantity(double value, Unit unit, int significant) {
-  return format_like(value, value, unit, significant);
+  return format_like(value, rounded(value, significant), unit, significant);
 }
 
 }  // namespace jigwright

@@ -56,7 +56,8 @@ Result<double> parse_quantity(std::string_view text, Unit unit);
 /// Ratios below 0.01 print in ppm, others plainly with "V/V". NaN and infinities print as "none".
 std::string format_quantity(double value, Unit unit, int significant = 4);
 
-/// As format_quantity, but with the prefix chosen for `scale` (a limit, say), so that a column reads alike.
+/// As format_quantity, but with the prefix chosen for `scale` (a limit, say), so that a column reads alike: at most
+/// `significant` - 1 decimals of that prefix.
 std::string format_like(double value, double scale, Unit unit, int significant = 4);
 
 }  // namespace jigwright

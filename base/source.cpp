@@ -55,8 +55,9 @@ std::string excerpt(const SourceRegion& region) {
   const std::size_t end = byte_of(line, std::min(length, first + widest));
   const auto carets = std::clamp<std::size_t>(static_cast<std::size_t>(std::max(region.length, 1)), 1,
                                               std::max<std::size_t>(1, std::min(length, first + widest) - column));
-  return "  " + printable(line.substr(begin, end - begin)) + "\n  " + std::string(column - first, ' ') +
-         std::string(carets, '^') + "\n";
+  std::string shown(line.substr(begin, end - begin));
+  std::replace(shown.begin(), shown.end(), '\t', ' ');
+  return "  " + printable(shown) + "\n  " + std::string(column - first, ' ') + std::string(carets, '^') + "\n";
 }
 
 /// Lines of at most `widest` characters, broken at spaces, each indented by two.

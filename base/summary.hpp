@@ -12,8 +12,8 @@ struct Summary {
   double sd{0};  ///< n-1 in the denominator; 0 for n < 2
 };
 
-/// Two passes with the correction term of Chan, Golub and LeVeque, Am. Stat. 37 (1983) 242, eq. 1.7; checked against
-/// the NIST StRD univariate sets.
+/// Two passes with the correction term of Chan, Golub and LeVeque, Am. Stat. 37 (1983) 242, eq. 1.7, summed with
+/// compensation; checked against the NIST StRD univariate sets.
 Summary summarize(std::span<const double> values);
 
 /// Lag-1 autocorrelation: sum (y[i]-m)(y[i+1]-m) / sum (y[i]-m)^2 (NIST/SEMATECH e-Handbook 1.3.5.12).
