@@ -156,9 +156,10 @@ std::optional<Limit> shown_limit(const Query& q, int at) {
   out.nominal = q.real(at + 3);
   out.share = q.real(at + 4);
   out.budget_U = q.real(at + 5);
-  out.width = q.real(at + 6);
-  out.applied = {q.maybe_real(at + 7), q.maybe_real(at + 8)};
-  out.reason = q.text(at + 9);
+  out.budget_of_reading = q.real(at + 6);
+  out.width = q.real(at + 7);
+  out.applied = {q.maybe_real(at + 8), q.maybe_real(at + 9)};
+  out.reason = q.text(at + 10);
   return out;
 }
 
@@ -167,11 +168,11 @@ ShownFinding shown_finding(const Query& q) {
   out.metric = shown_metric(q, 0);
   out.limit = shown_limit(q, 5);
   Finding& f = out.judged.finding;
-  f.value = q.real(15);
-  f.u = q.real(16);
-  f.n = static_cast<int>(q.integer(17));
-  f.state = static_cast<FindingState>(q.integer(18));
-  out.judged.verdict = static_cast<Verdict>(q.integer(19));
+  f.value = q.real(16);
+  f.u = q.real(17);
+  f.n = static_cast<int>(q.integer(18));
+  f.state = static_cast<FindingState>(q.integer(19));
+  out.judged.verdict = static_cast<Verdict>(q.integer(20));
   if (out.limit && f.state == FindingState::measured) out.judged.margin = margin(*out.limit, f.value);
   return out;
 }
@@ -180,7 +181,7 @@ std::vector<ShownFinding> findings_of(Database& database, std::int64_t trial) {
   std::vector<ShownFinding> out;
   Query q = database.query(
       "SELECT m.step, m.name, m.variant, m.unit, m.about, l.guard, l.spec_low, l.spec_high, l.nominal, l.share, "
-      "l.u_budget, l.width, l.low, l.high, l.reason, x.value, x.u, x.n, x.state, x.verdict "
+      "l.u_budget, l.u_of_reading, l.width, l.low, l.high, l.reason, x.value, x.u, x.n, x.state, x.verdict "
       "FROM finding x JOIN trial t ON t.id = x.trial JOIN metric m ON m.id = x.metric "
       "LEFT JOIN applied_limit l ON l.applied = t.applied AND l.metric = x.metric WHERE x.trial = ? ORDER BY x.metric",
       trial);
@@ -210,7 +211,7 @@ ShownTrial shown_trial(const Query& q) {
   out.limit_set = q.text(13);
   out.limit_revision = q.integer(14);
   out.depth = q.text(15);
-  out.judgement = static_cast<Judgement>(q.integer(16));
+  out.judgement = static_cast<Judgement>(q.integer(17));
   out.void_reason = q.text(17);
   out.unsafe = q.text(18);
   out.ambient_C = q.maybe_real(19);

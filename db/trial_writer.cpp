@@ -211,7 +211,11 @@ TrialWriter::Id TrialWriter::applied(const std::vector<FindingRow>& rows, const 
     if (!rows[i].limit) continue;
     const Limit& l = *rows[i].limit;
     record.add(metrics[i]).add(l.specification.low).add(l.specification.high).add(l.nominal);
-    record.add(std::int64_t{static_cast<int>(l.guard)}).add(l.share).add(l.budget_U).add(l.width);
+    record.add(std::int64_t{static_cast<int>(l.guard)})
+        .add(l.share)
+        .add(l.budget_U)
+        .add(l.budget_of_reading)
+        .add(l.width);
     record.add(l.applied.low).add(l.applied.high).add(l.reason);
   }
   const std::string digest = sha256(record.bytes());
@@ -228,9 +232,9 @@ TrialWriter::Id TrialWriter::applied(const std::vector<FindingRow>& rows, const 
 }
 
 void TrialWriter::insert_applied_limit(Id applied, Id metric, const Limit& l) {
-  db_.run("INSERT INTO applied_limit VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)", applied, metric, l.specification.low,
-          l.specification.high, l.nominal, static_cast<int>(l.guard), l.share, l.budget_U, l.width, l.applied.low,
-          l.applied.high, unless_empty(l.reason));
+  db_.run("INSERT INTO applied_limit VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)", applied, metric,
+          l.specification.low, l.specification.high, l.nominal, static_cast<int>(l.guard), l.share, l.budget_U,
+          l.budget_of_reading, l.width, l.applied.low, l.applied.high, unless_empty(l.reason));
 }
 
 TrialWriter::Id TrialWriter::equipment(const std::vector<InstrumentIdentity>& instruments) {

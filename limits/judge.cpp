@@ -15,7 +15,7 @@ bool usable(const Bounds& b) {
 /// 2u within the budget; a limit without a budget asks nothing. An unknown u is not within any budget.
 bool sure(const Finding& finding, const Limit& limit) {
   if (!(limit.budget_U > 0)) return true;
-  return finding.u >= 0 && 2 * finding.u <= limit.budget_U;
+  return finding.u >= 0 && 2 * finding.u <= budget_at(limit, finding.value);
 }
 
 Verdict verdict_of_value(const Finding& finding, const Limit& limit) {
@@ -86,6 +86,11 @@ class Tally {
                                                                      : nullptr;
   }
 
+  About about(int entry) const {
+    const Metric* m = metric(static_cast<std::size_t>(entry));
+    return m == nullptr ? About::board : m->about;
+  }
+
   std::string name(int entry) const {
     const Metric* m = metric(static_cast<std::size_t>(entry));
     return m == nullptr ? "a finding of no known metric" : label(m->name);
@@ -101,7 +106,8 @@ class Tally {
   std::span<const Judged> judged_;
 };
 
-std::string why_invalid(FindingState state) {
+std::string why_invalid(FindingState state, About about) {
+  if (state == FindingState::over_range && about == About::jig) return "was over range";
   if (state == FindingState::over_range) return "was over range, and the instrument is not proved right";
   if (state == FindingState::not_settled) return "never settled, and the instrument is not proved right";
   if (state == FindingState::no_data) return "gave no usable reading";
@@ -126,7 +132,8 @@ std::optional<Outcome> doubt(const Tally& t, std::span<const Metric> metrics, st
   if (const int i = t.first(Verdict::missed); i >= 0) return void_by(i, t.name(i) + " missed its limit");
   if (const int i = t.first(Verdict::unsure); i >= 0)
     return void_by(i, t.name(i) + " is less certain than its limit allows");
-  if (const int i = t.first(Verdict::invalid); i >= 0) return void_by(i, t.name(i) + " " + why_invalid(state(i)));
+  if (const int i = t.first(Verdict::invalid); i >= 0)
+    return void_by(i, t.name(i) + " " + why_invalid(state(i), t.about(i)));
   if (const int i = t.first(Verdict::no_evidence); i >= 0) return void_by(i, t.name(i) + " was not read");
   if (const int m = t.first_unmet(); m >= 0)
     return void_by(-1, label(metrics[static_cast<std::size_t>(m)].name) + " was not read");

@@ -14,7 +14,7 @@ namespace jigwright {
 enum class Verdict : std::uint8_t {
   met = 0,
   missed = 1,
-  unsure = 2,       ///< the finding's own uncertainty (2u) exceeds the budget: neither met nor missed
+  unsure = 2,       ///< the finding's own uncertainty (2u) exceeds the budget at its value: neither met nor missed
   no_evidence = 3,  ///< not read
   recorded = 4,     ///< no limit: recorded only
   invalid = 5,      ///< over range, never settled or no data, where the instrument is not proved right

@@ -41,6 +41,9 @@ std::optional<Error> fault_of_specification(const Limit& limit, Unit unit) {
 std::optional<Error> fault_of_band(const Limit& limit, Unit unit) {
   if (!(limit.budget_U >= 0) || !std::isfinite(limit.budget_U))
     return bad("the budgeted uncertainty is below zero", "give the expanded uncertainty (k = 2)");
+  if (!(limit.budget_of_reading >= 0 && limit.budget_of_reading < 1))
+    return bad("the part of the uncertainty that grows with the reading is not from 0 to 1",
+               "give a ratio, as in \"1 %\"");
   if (limit.guard == Guard::uncertainty && !(limit.share >= 0 && limit.share <= 3))
     return bad("the share of the uncertainty is not from 0 to 3", "1 takes the whole uncertainty off each bound");
   if (limit.guard == Guard::inset && !(limit.width >= 0 && std::isfinite(limit.width)))
@@ -56,6 +59,11 @@ Bounds inset(const Bounds& specification, double width) {
   return b;
 }
 
+/// The specification's bound of larger size: the guard band is as wide as the budget is there.
+double larger_bound(const Bounds& b) {
+  return std::max(std::abs(b.low.value_or(0)), std::abs(b.high.value_or(0)));
+}
+
 Error no_room(const Limit& limit, Unit unit) {
   const double room = *limit.specification.high - *limit.specification.low;
   if (limit.guard == Guard::inset)
@@ -63,14 +71,15 @@ Error no_room(const Limit& limit, Unit unit) {
                            shown(limit.width, unit), shown(room, unit)),
                "give an inset of less than half the room");
   return bad(fmt::format("the jig is too uncertain for this specification: U = {}, room = {}",
-                         shown(limit.budget_U, unit), shown(room, unit)),
+                         shown(budget_at(limit, larger_bound(limit.specification)), unit), shown(room, unit)),
              fmt::format("the guard band of {} at each bound leaves nothing; measure better, take a smaller share, or "
                          "type the test limit with a reason",
                          shown(limit.width, unit)));
 }
 
 Result<Limit> inset_limit(Limit limit, Unit unit) {
-  if (limit.guard == Guard::uncertainty) limit.width = limit.share * limit.budget_U;
+  if (limit.guard == Guard::uncertainty)
+    limit.width = limit.share * budget_at(limit, larger_bound(limit.specification));
   if (limit.guard == Guard::none) limit.width = 0;
   limit.applied = inset(limit.specification, limit.width);
   if (crossed(limit.applied)) return no_room(limit, unit);
@@ -111,6 +120,10 @@ double share_left(double distance, double room, double instead) {
 }
 
 }  // namespace
+
+double budget_at(const Limit& limit, double value) {
+  return limit.budget_U + limit.budget_of_reading * std::abs(value);
+}
 
 Result<Limit> apply_guard(Limit limit, Unit unit) {
   if (auto e = fault_of_specification(limit, unit)) return *e;

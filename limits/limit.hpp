@@ -29,12 +29,17 @@ struct Limit {
   Bounds specification;
   double nominal{std::numeric_limits<double>::quiet_NaN()};  ///< middle of the specification when the file is silent
   Guard guard{Guard::uncertainty};
-  double share{1};     ///< for Guard::uncertainty
-  double budget_U{};   ///< budgeted expanded uncertainty, k = 2, same for every board of this revision
-  double width{};      ///< guard band in force at each bound (typed: the larger of the two)
-  Bounds applied;      ///< the test limit
-  std::string reason;  ///< for typed and none
+  double share{1};             ///< for Guard::uncertainty
+  double budget_U{};           ///< budgeted expanded uncertainty, k = 2, same for every board of this revision ...
+  double budget_of_reading{};  ///< ... and the part of it that grows with the reading's size, a ratio
+  double width{};              ///< guard band in force at each bound (typed: the larger of the two)
+  Bounds applied;              ///< the test limit
+  std::string reason;          ///< for typed and none
 };
+
+/// The budgeted expanded uncertainty at a value: budget_U + budget_of_reading * |value|, the form in which instruments
+/// state their accuracy.
+double budget_at(const Limit& limit, double value);
 
 /// Fills `width` and `applied` of a limit whose other fields are set; the caller has put the stated amount of
 /// Guard::inset into `width`, and the test limits of Guard::typed into `applied`. A silent nominal becomes the middle

@@ -155,6 +155,13 @@ class EntryReader {
                            format_quantity(*budget, entry_.unit, 6)),
                "it is the budgeted expanded uncertainty (k = 2)");
     entry_.limit.budget_U = *budget;
+    const auto of_reading = r_.quantity("uncertainty_of_reading", Unit::ratio);
+    if (!of_reading) return;
+    if (!(of_reading->value >= 0 && of_reading->value < 1))
+      r_.fault(of_reading->region,
+               fmt::format("\"uncertainty_of_reading\": expected a ratio from 0 to 1, found {}", of_reading->value),
+               "it is the part of the uncertainty that grows with the reading, as in \"2 %\"");
+    entry_.limit.budget_of_reading = of_reading->value;
   }
 
   void read_share() {

@@ -178,6 +178,7 @@ Task<Result<SettingRecord>> Player::play(const Setting& setting, int index, cons
   record.setting = index;
   record.started = bench_.clock().now();
   const auto applied = co_await apply(setting);
+  if (stop_.set) co_return in_setting(stopped(), setting);
   if (!applied.ok()) co_return in_setting(applied.error(), setting);
   record.readings.reserve(std::holds_alternative<Fixed>(setting.stop)
                               ? static_cast<std::size_t>(std::get<Fixed>(setting.stop).n)
@@ -185,8 +186,8 @@ Task<Result<SettingRecord>> Player::play(const Setting& setting, int index, cons
   Next next = Next::more;
   while (next == Next::more) {
     const auto got = co_await read(setting);
-    if (!got.ok()) co_return in_setting(got.error(), setting);
     if (stop_.set) co_return in_setting(stopped(), setting);
+    if (!got.ok()) co_return in_setting(got.error(), setting);
     record.readings.push_back(got.value());
     if (on_reading) on_reading(setting, got.value());
     next = decide(setting.stop, record.readings);

@@ -317,12 +317,20 @@ void Trials::conclude(Body& body, const std::string& unsafe, TrialEnd& end) cons
   end.readings = encode_readings(body.records_, plan_->full.settings);
 }
 
+/// A NO-GO's action is its step's own text. A VOID says nothing of the board: the text of a step that only looks at the
+/// jig (contact, a known value) helps there, another step's would send a sound board to the reject shelf.
 std::string Trials::next_action(const Outcome& outcome) const {
-  if (outcome.deciding < 0) return {};
+  if (outcome.judgement == Judgement::go) return {};
+  const std::string again = "Try the board once more; if it is VOID again, call the engineer.";
+  if (outcome.deciding < 0) return again;
   const std::string& step = plan_->full.metrics[static_cast<std::size_t>(outcome.deciding)].name.step;
+  const bool of_jig = std::all_of(plan_->full.metrics.begin(), plan_->full.metrics.end(),
+                                  [&](const Metric& m) { return m.name.step != step || m.about == About::jig; });
+  std::string text;
   for (const auto& s : plan_->plan.steps)
-    if (s->id == step) return s->next_action;
-  return {};
+    if (s->id == step) text = s->next_action;
+  if (outcome.judgement == Judgement::void_ && !of_jig) return again;
+  return text;
 }
 
 /// Identity, safe state, the plan's settings. Leaves the reason in the body where it did not come to its end.

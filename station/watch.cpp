@@ -8,22 +8,30 @@
 
 namespace jigwright {
 
+namespace {
+/// A gain is read to parts per million, anything else to four digits.
+int significant(Unit unit) {
+  return unit == Unit::ratio ? 6 : 4;
+}
+}  // namespace
+
 std::string bounds_text(const Limit* limit, Unit unit) {
   if (limit == nullptr) return "no limit";
   const auto& [low, high] = limit->applied;
+  const int digits = significant(unit);
   if (low && high) {
     const double scale = std::max(std::abs(*low), std::abs(*high));
-    return fmt::format("{} to {}", format_like(*low, scale, unit), format_like(*high, scale, unit));
+    return fmt::format("{} to {}", format_like(*low, scale, unit, digits), format_like(*high, scale, unit, digits));
   }
-  if (low) return fmt::format("at least {}", format_quantity(*low, unit));
-  if (high) return fmt::format("at most {}", format_quantity(*high, unit));
+  if (low) return fmt::format("at least {}", format_quantity(*low, unit, digits));
+  if (high) return fmt::format("at most {}", format_quantity(*high, unit, digits));
   return "no limit";
 }
 
 std::string value_text(const Finding& finding, Unit unit) {
   switch (finding.state) {
     case FindingState::measured:
-      return format_quantity(finding.value, unit);
+      return format_quantity(finding.value, unit, significant(unit));
     case FindingState::over_range:
       return "over range";
     case FindingState::not_settled:
