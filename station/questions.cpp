@@ -320,13 +320,20 @@ std::string took(const ShownTrial& t) {
 }
 
 std::string trials_table(const BoardShown& shown) {
-  TextTable table({"trial", "tried", "judgement", "for", "plan", "limits", "depth", "took", "by", "station", "nest"},
-                  {true, false, false, false, false, false, false, true, false, false, true});
+  TextTable table({"trial", "tried", "judgement", "took", "for"}, {true, false, false, true, false});
   for (const ShownTrial& t : shown.trials)
     table.add({std::to_string(t.attempt) + (t.counts ? "*" : " "), utc_text(t.at_us), std::string(word(t.judgement)),
-               reason(t), t.plan, fmt::format("{} rev {}", t.limit_set, t.limit_revision), t.depth, took(t),
-               t.operator_name, t.station, std::to_string(t.nest)});
-  return table.text();
+               took(t), reason(t)});
+  return table.text() + "  (* speaks for the board)\n";
+}
+
+/// "Trial 1: plan p, limits l rev 3, full; by A. Tester at bench 1, nest 1."
+std::string circumstances(const ShownTrial& t) {
+  return printable(fmt::format("Trial {}: plan {}, limits {} rev {}, {}; by {} at {}, nest {}.", t.attempt, t.plan,
+                               t.limit_set, t.limit_revision, t.depth,
+                               t.operator_name.empty() ? "nobody logged in" : t.operator_name, t.station, t.nest)) +
+         "\n" +
+         (t.unsafe.empty() ? "" : fmt::format("Trial {} left unconfirmed: {}.\n", t.attempt, printable(t.unsafe)));
 }
 
 std::string findings_table(const ShownTrial& t) {
@@ -348,9 +355,7 @@ std::string table_of(const BoardShown& shown) {
   std::string out = printable(introduced(shown.board)) + ": " + standing(shown.board) + ".\n";
   if (shown.trials.empty()) return out;
   out += trials_table(shown);
-  out += "  (* speaks for the board)\n";
-  for (const ShownTrial& t : shown.trials)
-    if (!t.unsafe.empty()) out += fmt::format("Trial {} left unconfirmed: {}.\n", t.attempt, printable(t.unsafe));
+  for (const ShownTrial& t : shown.trials) out += circumstances(t);
   const ShownTrial* latest = latest_ended(shown);
   if (latest == nullptr) return out + "No trial has findings.\n";
   out +=

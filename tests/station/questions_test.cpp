@@ -135,18 +135,17 @@ TEST_CASE("a board's reels in the three forms; a cell like a formula is made saf
 TEST_CASE("a board's record as a table: trials, then the findings by margin") {
   CHECK(render(board_shown(), Form::table) ==
         "TB-01 (build number 1 of WO-1, amplifier): VOID, tried 2026-01-09T12:00:00Z, 2 trials.\n"
-        "  trial  tried                 judgement  for                             plan    limits          depth    "
-        "took  by         station  nest\n"
-        "     1   2026-01-09T12:00:00Z  NO-GO      offset: offset (x1)             plan-1  limits-1 rev 3  full   "
-        "2.24 s  A. Tester  bench 1     1\n"
-        "     2*  2026-01-09T12:01:00Z  VOID       the program ended in mid-trial  plan-1  limits-1 rev 3  full        "
-        "-  A. Tester  bench 1     1\n"
+        "  trial  tried                 judgement    took  for\n"
+        "     1   2026-01-09T12:00:00Z  NO-GO      2.24 s  offset: offset (x1)\n"
+        "     2*  2026-01-09T12:01:00Z  VOID            -  the program ended in mid-trial\n"
         "  (* speaks for the board)\n"
+        "Trial 1: plan plan-1, limits limits-1 rev 3, full; by A. Tester at bench 1, nest 1.\n"
+        "Trial 2: plan plan-1, limits limits-1 rev 3, full; by A. Tester at bench 1, nest 1.\n"
         "Findings of trial 1, least margin first (margin: share left of the room from nominal to limit):\n"
-        "   margin  finding                     value  U (k=2)  limits               readings  verdict\n"
-        "  -25.0 %  offset: offset (x1)        600 uV     8 uV  -480 uV to 480 uV          10  missed\n"
-        "   79.2 %  offset: offset (x10)       100 uV     8 uV  -480 uV to 480 uV          10  met\n"
-        "        -  offset: offset (x100)  over range        -  -                           0  recorded\n");
+        "   margin  finding                     value  U (k=2)  limits             readings  verdict\n"
+        "  -25.0 %  offset: offset (x1)        600 uV     8 uV  -480 uV to 480 uV        10  missed\n"
+        "   79.2 %  offset: offset (x10)       100 uV     8 uV  -480 uV to 480 uV        10  met\n"
+        "        -  offset: offset (x100)  over range        -  -                         0  recorded\n");
 }
 
 TEST_CASE("a board's record as CSV has a line a finding, and one for a trial without any") {
