@@ -204,6 +204,11 @@ int Layout::metric(std::string name, std::string variant, Unit unit, About about
   return static_cast<int>(expansion_.metrics.size()) - 1;
 }
 
+int Layout::nominal(int metric, double value) {
+  expansion_.metrics[static_cast<std::size_t>(metric)].nominal = value;
+  return metric;
+}
+
 Expansion Layout::named(const std::string& step_id) const {
   Expansion out = expansion_;
   for (Setting& s : out.settings) {

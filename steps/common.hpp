@@ -43,6 +43,8 @@ class Layout {
   /// With bounds of the step's own.
   int metric(std::string name, std::string variant, Unit unit, About about, std::optional<double> low,
              std::optional<double> high);
+  /// What a sound board or jig has: the margin is measured from there where the limit set does not tell.
+  int nominal(int metric, double value);
 
   std::size_t settings() const { return expansion_.settings.size(); }
   std::size_t metrics() const { return expansion_.metrics.size(); }

@@ -29,7 +29,7 @@ class ContactStep final : public Step {
       s.act = use_.on(range_, MeterFunction::resistance);
       s.stop = Fixed{use_.readings};
       layout_.add(std::move(s));
-      layout_.metric("loop", probe, Unit::ohm, About::jig, low_ohm, max_ohm);
+      layout_.nominal(layout_.metric("loop", probe, Unit::ohm, About::jig, low_ohm, max_ohm), 0);
     }
   }
 

@@ -86,8 +86,8 @@ class GainStep final : public Step {
       reads.levels[i].output[1] = add_read(context, range, reads, outputs_V[i], false, "back");
       reads.levels[i].input[1] = add_read(context, range, reads, outputs_V[i], true, "back");
     }
-    reads.gain_metric = layout_.metric("gain", range.id, Unit::ratio, About::board);
-    reads.linearity_metric = layout_.metric("linearity", range.id, Unit::ratio, About::board);
+    reads.gain_metric = layout_.nominal(layout_.metric("gain", range.id, Unit::ratio, About::board), range.gain);
+    reads.linearity_metric = layout_.nominal(layout_.metric("linearity", range.id, Unit::ratio, About::board), 0);
     ranges_.push_back(std::move(reads));
   }
 

@@ -27,7 +27,9 @@ class IdentityStep final : public Step {
     layout_ = Layout(context);
     layout_.add(std::move(s));
     const double room = std::abs(declared) * tolerance;
-    layout_.metric("identity", "", resistor ? Unit::ohm : Unit::volt, About::jig, declared - room, declared + room);
+    layout_.nominal(
+        layout_.metric("identity", "", resistor ? Unit::ohm : Unit::volt, About::jig, declared - room, declared + room),
+        declared);
   }
 
   Expansion expand(Depth) const override { return layout_.named(id); }

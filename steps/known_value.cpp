@@ -23,8 +23,8 @@ class KnownValueStep final : public Step {
     layout_.add(setting(context, "reference", "reference", Role::meter_to_reference, reference_range_));
     const double zero_bound_V = accuracy_bound(zero_range_, 0) + known_path_emf_V;
     const double bound_V = accuracy_bound(reference_range_, reference_V_) + known_path_emf_V + 2 * reference_u_V_;
-    layout_.metric("meter_zero", "", Unit::volt, About::jig, -zero_bound_V, zero_bound_V);
-    layout_.metric("reference_error", "", Unit::volt, About::jig, -bound_V, bound_V);
+    layout_.nominal(layout_.metric("meter_zero", "", Unit::volt, About::jig, -zero_bound_V, zero_bound_V), 0);
+    layout_.nominal(layout_.metric("reference_error", "", Unit::volt, About::jig, -bound_V, bound_V), 0);
   }
 
   Expansion expand(Depth) const override { return layout_.named(id); }

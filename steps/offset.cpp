@@ -53,7 +53,8 @@ class OffsetStep final : public Step {
     layout_ = Layout(context);
     if (keys_.subtract_zero) {
       zero_ = add_pair(context, unpowered_setting(context, "zero", "path zero"));
-      zero_metric_ = layout_.metric("path_zero", "", Unit::volt, About::jig, -keys_.zero_max_V, keys_.zero_max_V);
+      zero_metric_ = layout_.nominal(
+          layout_.metric("path_zero", "", Unit::volt, About::jig, -keys_.zero_max_V, keys_.zero_max_V), 0);
       age_metric_ = layout_.metric("path_zero_age", "", Unit::second, About::jig);
     }
     for (const auto& range : keys_.ranges) add_range(context, range);
@@ -115,7 +116,7 @@ class OffsetStep final : public Step {
     Entry entry;
     entry.pair = add_pair(context, std::move(s));
     entry.gain = range.gain;
-    entry.offset_metric = layout_.metric("offset", range.id, Unit::volt, About::board);
+    entry.offset_metric = layout_.nominal(layout_.metric("offset", range.id, Unit::volt, About::board), 0);
     entry.noise_metric = layout_.metric("noise", range.id, Unit::volt, About::board);
     entries_.push_back(entry);
   }

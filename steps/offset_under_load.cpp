@@ -134,8 +134,8 @@ class SweepMaker {
     sweep_.proof.base = add_tone("proof/open/low", "proof of open", nullptr, low_Hz);
     sweep_.proof.open.position = add_tone("proof/open/high", "proof of open", nullptr, high_Hz);
     sweep_.proof.open.frequency_Hz = high_Hz;
-    sweep_.proof.open.metric =
-        sweep_.layout.metric("load_proof", "open", Unit::farad, About::jig, 0.0, open_room * open_F());
+    sweep_.proof.open.metric = sweep_.layout.nominal(
+        sweep_.layout.metric("load_proof", "open", Unit::farad, About::jig, 0.0, open_room * open_F()), open_F());
     for (const Load& load : loads_) add_load_proof(load);
   }
 
@@ -145,8 +145,9 @@ class SweepMaker {
     read.frequency_Hz = tone_frequency(parallel_ohm(), total_F, jig_.source.tone_low_Hz, jig_.source.tone_high_Hz);
     read.position = add_tone("proof/" + load.id, "proof of " + load.id, &load, read.frequency_Hz);
     const double room_F = load.capacitance_F * keys_.proof_tolerance;
-    read.metric = sweep_.layout.metric("load_proof", load.id, Unit::farad, About::jig, load.capacitance_F - room_F,
-                                       load.capacitance_F + room_F);
+    read.metric = sweep_.layout.nominal(sweep_.layout.metric("load_proof", load.id, Unit::farad, About::jig,
+                                                             load.capacitance_F - room_F, load.capacitance_F + room_F),
+                                        load.capacitance_F);
     sweep_.proof.loads.push_back(read);
   }
 
@@ -201,7 +202,7 @@ class SweepMaker {
     l.before = read.opens.size() - 1;
     l.read = add_pair(load.id + "/" + level, variant, &load, level_V);
     l.output = volts("output", variant);
-    l.delta = volts("load_delta", variant);
+    l.delta = sweep_.layout.nominal(volts("load_delta", variant), 0);
     l.noise = volts("noise", variant);
     l.detector = volts("detector", variant);
     read.loads.push_back(l);
@@ -261,7 +262,7 @@ class SweepMaker {
     s.act = keys_.use.on(range_for(level_V));
     s.stop = keys_.stop;
     sweep_.return_position = sweep_.layout.add(std::move(s));
-    sweep_.return_metric = volts("return_to_open", level_text(level_V));
+    sweep_.return_metric = sweep_.layout.nominal(volts("return_to_open", level_text(level_V)), 0);
   }
 
   void add_power_up(const Load& load) {
@@ -275,7 +276,7 @@ class SweepMaker {
     s.act = keys_.use.on(range_for(0));
     s.stop = keys_.stop;
     read.open = sweep_.layout.add(std::move(s));
-    read.delta = volts("power_up_delta", load.id);
+    read.delta = sweep_.layout.nominal(volts("power_up_delta", load.id), 0);
     read.detector = volts("power_up_detector", load.id);
     sweep_.power_ups.push_back(read);
   }

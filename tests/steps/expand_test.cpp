@@ -253,3 +253,16 @@ TEST_CASE("a tone has time for three of its periods in the detector's dwell") {
   for (const Setting& s : e.settings)
     if (s.source.tone_V != 0) CHECK(std::get<ReadDetector>(s.act).dwell_s * s.source.tone_Hz >= 3 - 1e-9);
 }
+
+TEST_CASE("a metric whose sound value the step knows says so") {
+  const Expansion e = read_step("offset-under-load", under_load_keys).step->expand(Depth::full);
+  const auto nominal = [&](const char* name, const char* variant) {
+    return e.metrics[static_cast<std::size_t>(metric(e, name, variant))].nominal;
+  };
+  CHECK(nominal("load_proof", "1 nF") == doctest::Approx(1.012e-9));
+  CHECK(nominal("load_proof", "open") == doctest::Approx(65e-12));
+  CHECK(nominal("load_delta", "1 nF at +5 V") == 0);
+  CHECK(std::isnan(nominal("output", "1 nF at +5 V")));
+  const Expansion contact = read_step("contact", "").step->expand(Depth::full);
+  CHECK(contact.metrics[0].nominal == 0);
+}
