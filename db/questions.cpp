@@ -211,7 +211,7 @@ ShownTrial shown_trial(const Query& q) {
   out.limit_set = q.text(13);
   out.limit_revision = q.integer(14);
   out.depth = q.text(15);
-  out.judgement = static_cast<Judgement>(q.integer(17));
+  out.judgement = static_cast<Judgement>(q.integer(16));
   out.void_reason = q.text(17);
   out.unsafe = q.text(18);
   out.ambient_C = q.maybe_real(19);

@@ -57,7 +57,8 @@ CREATE TABLE applied(id INTEGER PRIMARY KEY, sha256 BLOB NOT NULL UNIQUE) STRICT
 CREATE TABLE applied_limit(
   applied INTEGER NOT NULL REFERENCES applied, metric INTEGER NOT NULL REFERENCES metric,
   spec_low REAL, spec_high REAL, nominal REAL, guard INTEGER NOT NULL, share REAL, u_budget REAL,
-  u_of_reading REAL NOT NULL, width REAL, low REAL, high REAL, reason TEXT, PRIMARY KEY(applied, metric)) STRICT, WITHOUT ROWID;
+  u_of_reading REAL, width REAL, low REAL, high REAL, reason TEXT,
+  PRIMARY KEY(applied, metric)) STRICT, WITHOUT ROWID;
 
 -- state: 0 open, 1 ended. judgement: 0 GO, 1 NO-GO, 2 VOID. origin: 0 measured, 1 simulated, 2 taken.
 CREATE TABLE trial(

@@ -110,6 +110,41 @@ TEST_CASE("a reel's boards with their latest judgement, certain at one designato
   CHECK(second.boards[1].certain);
 }
 
+TEST_CASE("show gives back every part of a limit as it was applied") {
+  const auto store = room::memory();
+  TrialEnd end = room::end(Judgement::go);
+  Limit& given = *end.findings[0].limit;
+  given.guard = Guard::typed;
+  given.share = 0.5;
+  given.budget_U = 21e-6;
+  given.budget_of_reading = 3e-4;
+  given.width = 22e-6;
+  given.reason = "typed for a test";
+  must(store->finish_trial(must(store->begin_trial(room::start("TB-01"))), end));
+  const BoardShown shown = must(store->show("TB-01"));
+  const auto& findings = shown.trials[0].findings;
+  const auto found = std::find_if(findings.begin(), findings.end(),
+                                  [](const ShownFinding& f) { return f.metric.name.variant == "x1"; });
+  REQUIRE(found != findings.end());
+  REQUIRE(found->limit);
+  CHECK(found->limit->guard == Guard::typed);
+  CHECK(found->limit->specification.low == -0.5e-3);
+  CHECK(found->limit->specification.high == 0.5e-3);
+  CHECK(found->limit->nominal == 0);
+  CHECK(found->limit->share == 0.5);
+  CHECK(found->limit->budget_U == 21e-6);
+  CHECK(found->limit->budget_of_reading == 3e-4);
+  CHECK(found->limit->width == 22e-6);
+  CHECK(found->limit->applied.low == -0.48e-3);
+  CHECK(found->limit->applied.high == 0.48e-3);
+  CHECK(found->limit->reason == "typed for a test");
+  CHECK(found->judged.finding.value == 0.1e-3);
+  CHECK(found->judged.finding.u == 4e-6);
+  CHECK(found->judged.finding.n == 10);
+  CHECK(found->judged.finding.state == FindingState::measured);
+  CHECK(found->judged.verdict == Verdict::met);
+}
+
 TEST_CASE("a board in no known order is known by its trials") {
   const auto store = room::memory();
   room::try_board(*store, "X-1", Judgement::go);

@@ -177,7 +177,7 @@ TEST_CASE("simulated and measured trials don't share a store, and the error name
   CHECK(number(*store, "SELECT count(*) FROM board") == 1);
 }
 
-TEST_CASE("a store whose first trial was refused takes the other origin still") {
+TEST_CASE("a refused trial leaves the store's origin as it was") {
   const auto store = room::memory();
   TrialStart measured = room::start("TB3-0001");
   measured.origin = Origin::measured;
