@@ -120,6 +120,7 @@ class EntryReader {
       limit.guard = static_cast<Guard>(std::find(guard_words().begin(), guard_words().end(), word->value) -
                                        guard_words().begin());
     read_budget();
+    read_budget_of_reading();
     read_share();
     read_inset();
     read_typed();
@@ -155,8 +156,15 @@ class EntryReader {
                            format_quantity(*budget, entry_.unit, 6)),
                "it is the budgeted expanded uncertainty (k = 2)");
     entry_.limit.budget_U = *budget;
+  }
+
+  /// The part of the budget that grows with the reading; it adds to the constant part and can't stand alone.
+  void read_budget_of_reading() {
     const auto of_reading = r_.quantity("uncertainty_of_reading", Unit::ratio);
     if (!of_reading) return;
+    if (!r_.has("uncertainty") && !guard_is(Guard::uncertainty))
+      r_.fault(of_reading->region, "\"uncertainty_of_reading\" stands without \"uncertainty\"",
+               "add uncertainty = \"...\", the part that does not grow with the reading");
     if (!(of_reading->value >= 0 && of_reading->value < 1))
       r_.fault(of_reading->region,
                fmt::format("\"uncertainty_of_reading\": expected a ratio from 0 to 1, found {}", of_reading->value),

@@ -124,6 +124,19 @@ TEST_CASE("a finding of unknown uncertainty is within no budget") {
   CHECK(verdict(found(0, -1e-6), offset_limit()) == Verdict::unsure);
 }
 
+TEST_CASE("a budget that grows with the reading lets a gross miss be a miss") {
+  // 0.5 mV + 2 % of 3.9 V is 78.5 mV.
+  Limit detector;
+  detector.specification.high = 5e-3;
+  detector.budget_U = 0.5e-3;
+  detector.budget_of_reading = 0.02;
+  detector = apply_guard(detector, Unit::volt).value();
+  CHECK(verdict(found(3.9, 39e-3), detector) == Verdict::missed);
+  CHECK(verdict(found(-3.9, 39e-3), detector) == Verdict::met);
+  CHECK(verdict(found(3.9, 39.5e-3), detector) == Verdict::unsure);
+  CHECK(verdict(found(1e-3, 0.3e-3), detector) == Verdict::unsure);
+}
+
 TEST_CASE("a limit without a budget asks nothing of the uncertainty") {
   Limit limit;
   limit.specification.low = 150;

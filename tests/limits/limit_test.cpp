@@ -84,6 +84,18 @@ TEST_CASE("typed test limits are taken as they stand, and the larger inset is th
   CHECK(got.value().width == doctest::Approx(0.2e-3));
 }
 
+TEST_CASE("a budget that grows with the reading guards as wide as it is at the larger bound") {
+  // 0.5 mV + 2 % of 5 mV is 0.6 mV.
+  Limit limit;
+  limit.specification.high = 5e-3;
+  limit.budget_U = 0.5e-3;
+  limit.budget_of_reading = 0.02;
+  const auto got = apply_guard(limit, Unit::volt);
+  REQUIRE(got.ok());
+  CHECK(*got.value().applied.high == doctest::Approx(4.4e-3));
+  CHECK(budget_at(limit, -10) == doctest::Approx(0.2005));
+}
+
 TEST_CASE("a one-sided specification is guarded on its own side only") {
   Limit limit;
   limit.specification.high = 5e-3;
