@@ -45,16 +45,18 @@ Task<Result<Done>> Player::set_source(const SourceState& state) {
   const auto set = co_await bench_.source().set(state, deadline(rules_.jig->source.settle_s));
   if (!set.ok()) co_return set.error();
   state_.source = state;
+  const auto waited = co_await wait(rules_.jig->source.settle_s);
   changed_ = bench_.clock().now();
-  co_return co_await wait(rules_.jig->source.settle_s);
+  co_return waited;
 }
 
 Task<Result<Done>> Player::set_supply(const SupplyState& state) {
   const auto set = co_await bench_.supply().set(nest_, state, deadline(rules_.jig->supply.settle_s));
   if (!set.ok()) co_return set.error();
   state_.supply = state;
+  const auto waited = co_await wait(rules_.jig->supply.settle_s);
   changed_ = bench_.clock().now();
-  co_return co_await wait(rules_.jig->supply.settle_s);
+  co_return waited;
 }
 
 Task<Result<Done>> Player::open(const RelaySet& set) {

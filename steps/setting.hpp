@@ -77,7 +77,7 @@ struct Setting {
   RelaySet bus;  ///< relays that join the nest to shared instruments (meter, source, detector)
   SupplyState supply;
   SourceState source;
-  double settle_s{};  ///< after the last relay is done and source and supply have answered
+  double settle_s{};  ///< after the last relay is done and source and supply have settled
   Act act;
   StopRule stop;
   std::uint32_t resources{};
