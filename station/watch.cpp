@@ -106,8 +106,10 @@ class TextWatcher final : public Watcher {
       return;
     }
     wipe();
-    fmt::print(out_, "  {:<52} {:>12}   {:<28} {}\n", label(metric.name), value_text(judged.finding, metric.unit),
-               bounds_text(limit, metric.unit), word(judged.verdict));
+    const bool bad =
+        judged.verdict == Verdict::missed || judged.verdict == Verdict::unsure || judged.verdict == Verdict::invalid;
+    fmt::print(out_, "{} {:<52} {:>12}   {:<28} {}\n", bad ? '!' : ' ', label(metric.name),
+               value_text(judged.finding, metric.unit), bounds_text(limit, metric.unit), word(judged.verdict));
   }
 
   void trial_ended(int, const TrialStart& start, const TrialEnd& end, const std::string& next_action,

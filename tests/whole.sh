@@ -43,6 +43,17 @@ expect 0 "NO-GO" show TB3-0180
 expect 4 'TB3-0180' show TB3-018
 expect 0 '"event":"trial_ended"' try plan-b.toml --serial TB3-0003 --json
 expect 0 "probe-open:PROBE" faults
+# A plan with a question: answered by option, as JSON on standard input, or by nobody.
+cp jig.toml limits-a.toml scenario.toml "$work"
+{ cat plan-a.toml; printf '\n[[step]]\nid = "lamp"\nkind = "question"\nask = "Is the lamp lit?"\nanswer = "yes"\n'; } >"$work/plan.toml"
+expect 0 "GO" try "$work/plan.toml" --serial TB3-0001 --answer lamp=yes
+expect 1 "NO-GO" try "$work/plan.toml" --serial TB3-0001 --answer lamp=no
+expect 2 "nobody is here to answer" try "$work/plan.toml" --serial TB3-0001
+expect 2 "does not answer" try "$work/plan.toml" --serial TB3-0001 --answer lamp=perhaps
+got=0; echo '{"answer": true}' | "$jigwright" --store "$work/store.db" try "$work/plan.toml" --serial TB3-0001 --json >"$work/out" 2>&1 || got=$?
+same "exit with an answer as JSON" "$got" 0
+grep -q '"event":"question"' "$work/out" && good || bad "no event for the question"
+
 # A store that can't be written: no board is tried.
 got=0; "$jigwright" --store /nonexistent/x.db try plan-b.toml --serial TB3-0001 >"$work/out" 2>&1 </dev/null || got=$?
 same "exit for a store that can't be made" "$got" 5
