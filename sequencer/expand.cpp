@@ -90,10 +90,10 @@ class Matcher {
       if (m.name == entry.metric) of_metric.push_back(i);
     }
     if (std::find(steps.begin(), steps.end(), entry.step) == steps.end())
-      return faults_.fault(entry.region, fmt::format("{}: the plan has no step \"{}\"", about, entry.step),
+      return faults_.fault(entry.step_region, fmt::format("{}: the plan has no step \"{}\"", about, entry.step),
                            advice(entry.step, steps, "its steps"));
     if (of_metric.empty())
-      return faults_.fault(entry.region,
+      return faults_.fault(entry.metric_region,
                            fmt::format("{}: step \"{}\" finds no metric \"{}\"", about, entry.step, entry.metric),
                            advice(entry.metric, unique(names), "it finds"));
     for (const std::size_t i : chosen(entry, of_metric, about)) put(entry, i, about);
@@ -122,7 +122,8 @@ class Matcher {
                                   const std::string& about) {
     if (entry.variants.empty()) return of_metric;
     std::vector<std::size_t> out;
-    for (const std::string& variant : entry.variants) {
+    for (std::size_t v = 0; v < entry.variants.size(); ++v) {
+      const std::string& variant = entry.variants[v];
       std::vector<std::string> known;
       bool found = false;
       for (const std::size_t i : of_metric) {
@@ -132,7 +133,7 @@ class Matcher {
         found = true;
       }
       if (!found)
-        faults_.fault(entry.region, fmt::format("{}: no variant \"{}\"", about, variant),
+        faults_.fault(entry.variant_regions[v], fmt::format("{}: no variant \"{}\"", about, variant),
                       advice(variant, known, "its variants"));
     }
     return out;
@@ -141,8 +142,11 @@ class Matcher {
   void put(const LimitEntry& entry, std::size_t i, const std::string& about) {
     const Metric& m = expanded_.metrics[i];
     if (m.unit != entry.unit)
-      return faults_.fault(entry.region, fmt::format("{}: expected {}, found {}", about, quantity_name(m.unit),
-                                                     quantity_name(entry.unit)));
+      return faults_.fault(
+          entry.unit_region,
+          fmt::format("{}: expected {}, found {}", about, quantity_name(m.unit), quantity_name(entry.unit)),
+          fmt::format("the metric is found in {}: write the limit so",
+                      symbol(m.unit).empty() ? "plain numbers" : symbol(m.unit)));
     if (owner_[i] != nullptr)
       return faults_.fault(entry.region, fmt::format("{}: a second limit for \"{}\"", about, label(m.name)),
                            "the first stands at " + where(owner_[i]->region));

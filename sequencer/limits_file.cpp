@@ -33,8 +33,12 @@ class EntryReader {
 
  private:
   void read_names() {
-    entry_.step = r_.need_text("step").value;
-    entry_.metric = r_.need_text("metric").value;
+    const auto step = r_.need_text("step");
+    const auto metric = r_.need_text("metric");
+    entry_.step = step.value;
+    entry_.step_region = step.region;
+    entry_.metric = metric.value;
+    entry_.metric_region = metric.region;
     if (!entry_.step.empty() && !entry_.metric.empty())
       r_.rename(fmt::format("limit for {}: {}", entry_.step, entry_.metric));
     if (!r_.has("variants")) return;
@@ -42,6 +46,7 @@ class EntryReader {
       if (std::find(entry_.variants.begin(), entry_.variants.end(), v.value) != entry_.variants.end())
         r_.fault(v.region, fmt::format("variant \"{}\" is named twice", v.value), "name each variant once");
       entry_.variants.push_back(v.value);
+      entry_.variant_regions.push_back(v.region);
     }
   }
 
@@ -213,6 +218,7 @@ class EntryReader {
   }
 
   void apply() {
+    entry_.unit_region = unit_region_;
     auto applied = apply_guard(entry_.limit, entry_.unit);
     if (applied)
       entry_.limit = std::move(applied.value());

@@ -30,7 +30,8 @@ struct Plan {
 struct LimitEntry {
   std::string step, metric;
   std::vector<std::string> variants;  ///< empty = every variant of the metric
-  SourceRegion region;
+  SourceRegion region, step_region, metric_region, unit_region;
+  std::vector<SourceRegion> variant_regions;  ///< beside variants
   Unit unit{Unit::count};
   Limit limit;
 };

@@ -1,5 +1,7 @@
 // Kind "contact": the loop of force and sense pin over each pad, in ohm, before anything else touches the board. About
 // 0 V is what a perfect offset looks like and also what an open probe looks like: so every probe of the jig is read.
+// Then the meter's own paths to the board, for an open relay there reads about 0 V too: the output through the board's
+// feedback network, and the input through the jig's short, where the jig has these relays.
 // Keys: probes (all; leaving one out is a fault), max ("5 ohm"), readings (2), integration_cycles (1).
 #include <fmt/format.h>
 
@@ -14,23 +16,25 @@ namespace {
 
 /// A loop may read this much below nothing for the meter's own zero.
 constexpr double low_ohm = -0.5;
+/// The output's path is open beyond this times what the plan states from OUT to GND without power. No lower bound: a
+/// shorted output is the board's fault, and other steps find it.
+constexpr double open_path = 3;
 
 class ContactStep final : public Step {
  public:
   void lay_out(const StepContext& context, const std::vector<std::string>& probes, double max_ohm,
                const MeterUse& use) {
+    const Jig& jig = *context.jig;
     use_ = use;
-    range_ = context.jig->meter.resistance.front();
     layout_ = Layout(context);
     for (const std::string& probe : probes) {
       Setting s = unpowered_setting(context, probe, probe);
-      s.phase = Phase::contact;
-      join(s, *context.jig, Role::probe_loop, probe);
-      s.act = use_.on(range_, MeterFunction::resistance);
-      s.stop = Fixed{use_.readings};
-      layout_.add(std::move(s));
+      join(s, jig, Role::probe_loop, probe);
+      add(std::move(s), jig.meter.resistance.front());
       layout_.nominal(layout_.metric("loop", probe, Unit::ohm, About::jig, low_ohm, max_ohm), 0);
     }
+    if (jig.has(Role::meter_to_output)) add_output_path(context);
+    if (jig.has(Role::meter_to_input) && jig.has(Role::input_short)) add_input_path(context, max_ohm);
   }
 
   Expansion expand(Depth) const override { return layout_.named(id); }
@@ -40,21 +44,47 @@ class ContactStep final : public Step {
     const Records played(records, settings, layout_.settings());
     std::vector<Finding> out;
     for (int i = 0; i < static_cast<int>(layout_.settings()); ++i)
-      if (const auto loop = played.sample(i)) out.push_back(found(i, loop->state, loop->mean, u(*loop), loop->n));
+      if (const auto loop = played.sample(i)) out.push_back(found(i, loop->state, loop->mean, u(i, *loop), loop->n));
     return out;
   }
 
  private:
-  double u(const Sample& sample) const {
+  void add(Setting s, const Accuracy& range) {
+    s.phase = Phase::contact;
+    s.act = use_.on(range, MeterFunction::resistance);
+    s.stop = Fixed{use_.readings};
+    layout_.add(std::move(s));
+    ranges_.push_back(range);
+  }
+
+  void add_output_path(const StepContext& context) {
+    Setting s = unpowered_setting(context, "path to output", "path to output");
+    join(s, *context.jig, Role::meter_to_output);
+    add(std::move(s), context.jig->resistance_range(context.board.unpowered_ohm));
+    layout_.nominal(
+        layout_.metric("path", "output", Unit::ohm, About::jig, low_ohm, open_path * context.board.unpowered_ohm),
+        context.board.unpowered_ohm);
+  }
+
+  void add_input_path(const StepContext& context, double max_ohm) {
+    Setting s = unpowered_setting(context, "path to input", "path to input");
+    join(s, *context.jig, Role::input_short);
+    join(s, *context.jig, Role::meter_to_input);
+    add(std::move(s), context.jig->meter.resistance.front());
+    layout_.nominal(layout_.metric("path", "input", Unit::ohm, About::jig, low_ohm, max_ohm), 0);
+  }
+
+  double u(int setting, const Sample& sample) const {
+    const Accuracy& range = ranges_[static_cast<std::size_t>(setting)];
     return Combined()
-        .add(specified(range_, sample.mean))
-        .add(scatter(sample.sd, sample.n, use_.noise(range_)))
-        .add(rounding(range_.resolution))
+        .add(specified(range, sample.mean))
+        .add(scatter(sample.sd, sample.n, use_.noise(range)))
+        .add(rounding(range.resolution))
         .u();
   }
 
   MeterUse use_;
-  Accuracy range_;
+  std::vector<Accuracy> ranges_;  ///< by setting
   Layout layout_;
 };
 
@@ -102,6 +132,19 @@ void check_loops(TableReader& reader, const Jig& jig, const std::vector<std::str
                    fmt::format("add a relay with role = \"probe loop\" and of = \"{}\" to the jig", probe));
 }
 
+/// Without a range that holds it, the output's path would read as open on every board.
+void check_output_range(TableReader& reader, const StepContext& context) {
+  if (!context.jig->has(Role::meter_to_output) || context.jig->meter.resistance.empty()) return;
+  const Accuracy& range = context.jig->resistance_range(context.board.unpowered_ohm);
+  if (context.board.unpowered_ohm <= range.overload * range.range) return;
+  reader.fault(
+      reader.region(),
+      fmt::format("the meter's path to the output can't be proved: OUT is stated as {} without power, the meter's "
+                  "largest resistance range is {}",
+                  format_quantity(context.board.unpowered_ohm, Unit::ohm), format_quantity(range.range, Unit::ohm)),
+      "add the meter's next resistance range to the jig");
+}
+
 }  // namespace
 
 std::unique_ptr<Step> read_contact(TableReader& reader, const StepContext& context) {
@@ -110,6 +153,7 @@ std::unique_ptr<Step> read_contact(TableReader& reader, const StepContext& conte
   const auto all = context.jig ? probe_ids(*context.jig) : std::vector<std::string>{};
   const auto probes = read_probes(reader, all);
   if (context.jig) check_loops(reader, *context.jig, probes);
+  if (context.jig) check_output_range(reader, context);
   const auto most = reader.quantity("max", Unit::ohm, Plausible{0.05, 100});
   if (most && !(most->value > 0)) reader.fault(most->region, "\"max\" must be more than 0 ohm", "write \"5 ohm\"");
   const MeterUse use = read_meter_use(reader, context, 2);

@@ -32,7 +32,7 @@ may_include sequencer base fixtures steps limits db
 may_include station base fixtures steps limits db sequencer
 
 # toml++, SQLite and JSON stay where they belong.
-grep -ln 'toml++' $sources | grep -v '^base/toml.cpp$' && say "toml++ belongs into base/toml.cpp"
+grep -ln '#include <toml++' $sources | grep -v '^base/toml.cpp$' && say "toml++ belongs into base/toml.cpp"
 grep -ln '<sqlite3.h>' $sources | grep -vE '^(db|tests/db)/' && say "SQLite belongs into db/"
 
 exit $bad

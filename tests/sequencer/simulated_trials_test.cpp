@@ -177,6 +177,18 @@ TEST_CASE("no relay of a path that the plan reads leads to GO when it is stuck o
   }
 }
 
+TEST_CASE("an open relay between meter and board is the jig's fault, not the board's") {
+  for (const Role role : {Role::meter_to_output, Role::meter_to_input, Role::input_short}) {
+    const RelaySet set = plan_b()->jig->relays_of(role);
+    for (std::size_t i = 0; i < plan_b()->jig->relays.size(); ++i) {
+      if (!set[i]) continue;
+      const TrialResult r = try_one({"relay-open:" + plan_b()->jig->relays[i].id});
+      CAPTURE(plan_b()->jig->relays[i].id);
+      CHECK(judgement(r) == Judgement::void_);
+    }
+  }
+}
+
 TEST_CASE("faults of board and instruments lead to what the rules say") {
   CHECK(judgement(try_one({"rail-short"})) == Judgement::no_go);
   CHECK(judgement(try_one({"rail-low"})) == Judgement::no_go);

@@ -145,12 +145,28 @@ TEST_CASE("the longest time of a setting is not less than the usual one, and hol
 
 TEST_CASE("every probe of the jig has its loop read, with a bound of the step's own") {
   const Expansion e = read_step("contact", "").step->expand(Depth::full);
-  REQUIRE(e.settings.size() == sample_jig()->probes.size());
-  for (std::size_t i = 0; i < e.settings.size(); ++i) {
+  REQUIRE(e.settings.size() > sample_jig()->probes.size());
+  for (std::size_t i = 0; i < sample_jig()->probes.size(); ++i) {
     CHECK(closed(e.settings[i], Role::probe_loop, sample_jig()->probes[i].id));
     CHECK(std::get<ReadMeter>(e.settings[i].act).setup.function == MeterFunction::resistance);
     CHECK(std::get<ReadMeter>(e.settings[i].act).setup.range == 100);
     CHECK(e.metrics[i].own_high == 5.0);
+    CHECK(e.metrics[i].about == About::jig);
+  }
+}
+
+TEST_CASE("the meter's paths to output and input are read in ohm after the probes, before power") {
+  const Expansion e = read_step("contact", "").step->expand(Depth::full);
+  const std::size_t n = sample_jig()->probes.size();
+  REQUIRE(e.settings.size() == n + 2);
+  CHECK(closed(e.settings[n], Role::meter_to_output));
+  CHECK(std::get<ReadMeter>(e.settings[n].act).setup.range == 100e3);  // the board states 22 kohm
+  CHECK(e.metrics[n].own_high == 66e3);
+  CHECK(closed(e.settings[n + 1], Role::meter_to_input));
+  CHECK(closed(e.settings[n + 1], Role::input_short));
+  for (std::size_t i = n; i < n + 2; ++i) {
+    CHECK(e.settings[i].phase == Phase::contact);
+    CHECK(std::get<ReadMeter>(e.settings[i].act).setup.function == MeterFunction::resistance);
     CHECK(e.metrics[i].about == About::jig);
   }
 }

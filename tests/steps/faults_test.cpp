@@ -104,7 +104,7 @@ TEST_CASE("a level that the source can't make is a fault") {
 TEST_CASE("a missing or a second identity is a fault") {
   says(report("identity", "tolerance = \"2 %\"\n"), "needs either \"resistor\" or \"voltage\"");
   says(report("identity", "resistor = \"1 kohm\"\nvoltage = \"1 V\"\ntolerance = \"2 %\"\n"), "needs either");
-  says(report("identity", "resistor = \"4.99 Mohm\"\ntolerance = \"2 %\"\n"), "the meter's largest range is 10 kohm");
+  says(report("identity", "resistor = \"4.99 Mohm\"\ntolerance = \"2 %\"\n"), "the meter's largest range is 100 kohm");
   says(report("identity", "resistor = \"4.99 kohm\"\n"), "\"tolerance\" is missing");
 }
 
