@@ -8,6 +8,7 @@
 
 #include "db/csv.hpp"
 #include "db/week.hpp"
+#include "station/words.hpp"
 
 namespace jigwright {
 namespace {
@@ -88,21 +89,6 @@ std::string how(bool certain) {
 }
 std::string yes_no(std::optional<bool> value) {
   return !value ? "" : *value ? "yes" : "no";
-}
-std::string word_of(FindingState state) {
-  switch (state) {
-    case FindingState::measured:
-      return "measured";
-    case FindingState::over_range:
-      return "over range";
-    case FindingState::not_settled:
-      return "not settled";
-    case FindingState::no_data:
-      return "no data";
-    case FindingState::skipped:
-      break;
-  }
-  return "skipped";
 }
 std::string word_of(Origin origin) {
   return origin == Origin::measured ? "measured" : origin == Origin::simulated ? "simulated" : "taken";
@@ -273,43 +259,6 @@ std::string json_text(const ReelTrace& trace) {
 
 // ---- show
 
-/// "-0.48 mV to 0.48 mV", "at most 5 mV", "at least 150 ohm"; empty where there is no limit.
-std::string bounds_text(const ShownFinding& f) {
-  if (!f.limit) return "";
-  const auto [low, high] = f.limit->applied;
-  auto shown = [&](double bound) { return format_quantity(bound, f.metric.unit); };
-  if (low && high) return shown(*low) + " to " + shown(*high);
-  if (high) return "at most " + shown(*high);
-  return low ? "at least " + shown(*low) : "";
-}
-
-/// The size by which value and limits are read: the larger bound, else the value.
-double scale(const ShownFinding& f) {
-  double size = 0;
-  if (f.limit)
-    for (const auto& bound : {f.limit->applied.low, f.limit->applied.high})
-      if (bound) size = std::max(size, std::abs(*bound));
-  return size > 0 ? size : f.judged.finding.value;
-}
-
-std::string value_text(const ShownFinding& f) {
-  if (f.judged.finding.state != FindingState::measured) return word_of(f.judged.finding.state);
-  const double value = f.judged.finding.value;
-  // A two-sided limit about its nominal reads best at the limit's own scale; one far off would lose the digits.
-  const double size = scale(f);
-  return std::abs(value) >= size / 1000 ? format_like(value, size, f.metric.unit, 6)
-                                        : format_quantity(value, f.metric.unit);
-}
-
-std::string u_text(const ShownFinding& f) {
-  const double u = f.judged.finding.u;
-  return std::isfinite(u) ? format_quantity(2 * u, f.metric.unit, 2) : "";
-}
-
-std::string margin_text(const ShownFinding& f) {
-  return std::isfinite(f.judged.margin) ? fmt::format("{:.1f} %", 100 * f.judged.margin) : "";
-}
-
 std::string reason(const ShownTrial& t) {
   if (t.judgement == Judgement::void_) return t.void_reason;
   return t.deciding && t.judgement == Judgement::no_go ? *t.deciding : "";
@@ -340,8 +289,10 @@ std::string findings_table(const ShownTrial& t) {
   TextTable table({"margin", "finding", "value", "U (k=2)", "limits", "readings", "verdict"},
                   {true, false, true, true, false, true, false});
   for (const ShownFinding& f : t.findings)
-    table.add({margin_text(f), label(f.metric.name), value_text(f), u_text(f), bounds_text(f),
-               std::to_string(f.judged.finding.n), std::string(word(f.judged.verdict))});
+    table.add({margin_text(f.judged.margin), label(f.metric.name), value_text(f.judged.finding, f.metric.unit),
+               uncertainty_text(f.judged.finding, f.metric.unit),
+               bounds_text(f.limit ? &*f.limit : nullptr, f.metric.unit), std::to_string(f.judged.finding.n),
+               std::string(word(f.judged.verdict))});
   return table.text();
 }
 
@@ -393,7 +344,7 @@ Cells finding_cells(const ShownFinding& f) {
           csv_number(found.value),
           csv_number(found.u),
           std::to_string(found.n),
-          word_of(found.state),
+          std::string(state_word(found.state)),
           std::string(word(f.judged.verdict)),
           csv_number(f.judged.margin),
           csv_number(applied.low),
@@ -431,7 +382,7 @@ Json json_of(const ShownFinding& f) {
   out["value"] = number(found.value);
   out["u"] = number(found.u);
   out["n"] = found.n;
-  out["state"] = word_of(found.state);
+  out["state"] = state_word(found.state);
   out["verdict"] = word(f.judged.verdict);
   out["margin"] = number(f.judged.margin);
   if (!f.limit) return out;

@@ -6,43 +6,9 @@
 #include <cmath>
 #include <nlohmann/json.hpp>
 
+#include "station/words.hpp"
+
 namespace jigwright {
-
-namespace {
-/// A gain is read to parts per million, anything else to four digits.
-int significant(Unit unit) {
-  return unit == Unit::ratio ? 6 : 4;
-}
-}  // namespace
-
-std::string bounds_text(const Limit* limit, Unit unit) {
-  if (limit == nullptr) return "no limit";
-  const auto& [low, high] = limit->applied;
-  const int digits = significant(unit);
-  if (low && high) {
-    const double scale = std::max(std::abs(*low), std::abs(*high));
-    return fmt::format("{} to {}", format_like(*low, scale, unit, digits), format_like(*high, scale, unit, digits));
-  }
-  if (low) return fmt::format("at least {}", format_quantity(*low, unit, digits));
-  if (high) return fmt::format("at most {}", format_quantity(*high, unit, digits));
-  return "no limit";
-}
-
-std::string value_text(const Finding& finding, Unit unit) {
-  switch (finding.state) {
-    case FindingState::measured:
-      return format_quantity(finding.value, unit, significant(unit));
-    case FindingState::over_range:
-      return "over range";
-    case FindingState::not_settled:
-      return "never settled";
-    case FindingState::no_data:
-      return "no reading";
-    case FindingState::skipped:
-      return "not read";
-  }
-  return "not read";
-}
 
 namespace {
 
@@ -102,7 +68,8 @@ class TextWatcher final : public Watcher {
   void finding(int, const Metric& metric, const Limit* limit, const Judged& judged) override {
     if (detail_ != Detail::findings) {
       if (terminal_)
-        last_ = fmt::format("   last: {} = {}", label(metric.name), value_text(judged.finding, metric.unit));
+        last_ = fmt::format("   last: {} = {}{}", label(metric.name), value_text(judged.finding, metric.unit),
+                            limit == nullptr ? "" : fmt::format(" ({})", bounds_text(limit, metric.unit)));
       return;
     }
     wipe();
@@ -192,11 +159,6 @@ Json number(double v) {
 }
 Json bound(const std::optional<double>& v) {
   return v ? number(*v) : Json(nullptr);
-}
-
-std::string state_word(FindingState state) {
-  static constexpr const char* words[] = {"measured", "over_range", "not_settled", "no_data", "skipped"};
-  return words[static_cast<int>(state)];
 }
 
 Json finding_json(const Metric& metric, const Limit* limit, const Judged& judged) {

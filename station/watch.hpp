@@ -37,9 +37,4 @@ std::unique_ptr<Watcher> make_json_watcher(std::FILE* out);
 std::unique_ptr<Person> make_person(asio::io_context& io, Clock& clock,
                                     std::vector<std::pair<std::string, std::string>> answers, bool json, bool terminal);
 
-/// The limits of a metric in words: "-0.48 mV to 0.48 mV", "at most 4.5 mV", "no limit".
-std::string bounds_text(const Limit* limit, Unit unit);
-/// "0.1123 mV", "over range", "not read" ...: never a NaN.
-std::string value_text(const Finding& finding, Unit unit);
-
 }  // namespace jigwright

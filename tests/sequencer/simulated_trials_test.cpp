@@ -67,6 +67,50 @@ std::shared_ptr<const ReadyPlan> with_nests(int nests) {
   return out;
 }
 
+/// Keeps nothing, and fails where told.
+struct FailingRecorder final : Recorder {
+  bool begin_fails{false}, finish_fails{false};
+  int begun{0};
+  static Error full() { return {Error::Kind::store, "the disk is full", "results.db", {}}; }
+  Task<Result<OpenTrial>> begin(const TrialStart&) override {
+    ++begun;
+    if (begin_fails) co_return full();
+    co_return OpenTrial{};
+  }
+  Task<Result<Done>> finish(const OpenTrial&, const TrialEnd&) override {
+    if (finish_fails) co_return full();
+    co_return Done{};
+  }
+};
+
+/// Ends all trials when the n-th setting begins.
+struct StopAt final : Silent {
+  Trials* trials{nullptr};
+  int at{0}, seen{0};
+  void setting_started(const Progress&, const std::string&, const Setting&) override {
+    if (++seen == at) trials->stop("stopped at the station");
+  }
+};
+
+/// One sound board with a recorder and a watcher of the test's own.
+TrialResult try_with(Recorder& recorder, Silent& watcher, StopAt* stop = nullptr) {
+  asio::io_context io{1};
+  const auto clock = make_virtual_clock();
+  const SimulatedOptions options;
+  const auto bench = make_simulated_bench(plan_b()->jig, scenario(), *clock, options);
+  Nobody nobody;
+  TrialSetup setup;
+  setup.origin = Origin::simulated;
+  Trials trials(io, *bench, plan_b(), watcher, nobody, recorder, setup);
+  if (stop != nullptr) stop->trials = &trials;
+  std::optional<TrialResult> out;
+  auto one = [&]() -> Task<void> { out.emplace(co_await trials.run(1, "TB3-0001", "WO-1041")); };
+  asio::co_spawn(io, one(), asio::detached);
+  clock->run(io);
+  REQUIRE(out.has_value());
+  return std::move(*out);
+}
+
 struct Tried {
   std::map<std::string, TrialResult> of;  ///< by serial
   bool relays_open{true};
@@ -247,4 +291,39 @@ TEST_CASE("one nest's trouble stays its own") {
   CHECK(judgement(tried.of.at("TB3-0001")) == Judgement::go);
   CHECK(judgement(tried.of.at("TB3-0188")) == Judgement::no_go);
   CHECK(judgement(tried.of.at("TB3-0003")) == Judgement::go);
+}
+
+TEST_CASE("a trial whose start can't be recorded is not begun") {
+  FailingRecorder recorder;
+  recorder.begin_fails = true;
+  StopAt counting;
+  const TrialResult r = try_with(recorder, counting);
+  CHECK(judgement(r) == Judgement::void_);
+  CHECK_FALSE(r.recorded);
+  CHECK(counting.seen == 0);
+}
+
+TEST_CASE("a sound board whose record can't be made durable is VOID, never GO") {
+  FailingRecorder recorder;
+  recorder.finish_fails = true;
+  Silent silent;
+  const TrialResult r = try_with(recorder, silent);
+  CHECK(judgement(r) == Judgement::void_);
+  CHECK_FALSE(r.recorded);
+  CHECK(r.end.outcome.void_reason.find("the disk is full") != std::string::npos);
+}
+
+TEST_CASE("a stop at any setting is VOID with the reason, and the safe state is confirmed") {
+  const int settings = static_cast<int>(plan_b()->full.settings.size());
+  for (int at = 1; at < settings - 5; at += 7) {
+    CAPTURE(at);
+    FailingRecorder recorder;
+    StopAt watcher;
+    watcher.at = at;
+    const TrialResult r = try_with(recorder, watcher, &watcher);
+    CHECK(judgement(r) == Judgement::void_);
+    CHECK(r.end.outcome.void_reason.find("stopped at the station") != std::string::npos);
+    CHECK(r.end.safe_state.empty());
+    CHECK(r.recorded);
+  }
 }
