@@ -46,8 +46,8 @@ std::string_view state_word(FindingState state) {
 std::string uncertainty_text(const Finding& finding, Unit unit) {
   const double U = 2 * finding.u;
   if (!std::isfinite(U)) return "";
-  // A ratio keeps its value's own unit: 0.0071 V/V beside 99.9892 V/V, not ppm.
-  return unit == Unit::ratio ? format_like(U, finding.value, unit, 2) : format_quantity(U, unit, 2);
+  // A ratio keeps its value's own unit: 0.0071 V/V beside 99.9892 V/V; ppm only where that would be all zeros.
+  return unit == Unit::ratio && U >= 1e-4 ? fmt::format("{:.2g} V/V", U) : format_quantity(U, unit, 2);
 }
 
 std::string bounds_text(const Limit* limit, Unit unit) {

@@ -142,10 +142,10 @@ TEST_CASE("a board's record as a table: trials, then the findings by margin") {
         "Trial 1: plan plan-1, limits limits-1 rev 3, full; by A. Tester at bench 1, nest 1.\n"
         "Trial 2: plan plan-1, limits limits-1 rev 3, full; by A. Tester at bench 1, nest 1.\n"
         "Findings of trial 1, least margin first (margin: share left of the room from nominal to limit):\n"
-        "   margin  finding                     value  U (k=2)  limits             readings  verdict\n"
-        "  -25.0 %  offset: offset (x1)        600 uV     8 uV  -480 uV to 480 uV        10  missed\n"
-        "   79.2 %  offset: offset (x10)       100 uV     8 uV  -480 uV to 480 uV        10  met\n"
-        "        -  offset: offset (x100)  over range        -  -                         0  recorded\n");
+        "  margin  finding                     value  U (k=2)  limits             readings  verdict\n"
+        "   -25 %  offset: offset (x1)        600 uV     8 uV  -480 uV to 480 uV        10  missed\n"
+        "    79 %  offset: offset (x10)       100 uV     8 uV  -480 uV to 480 uV        10  met\n"
+        "       -  offset: offset (x100)  over range        -  -                         0  recorded\n");
 }
 
 TEST_CASE("a board's record as CSV has a line a finding, and one for a trial without any") {

@@ -37,7 +37,7 @@ TEST_CASE("without an uncertainty four digits are shown, and without a value its
 }
 
 TEST_CASE("the uncertainty of a gain is in the gain's own unit") {
-  CHECK(uncertainty_text(measured(99.9892, 0.003525), Unit::ratio) == "0.0071 V/V");
+  CHECK(uncertainty_text(measured(99.9892, 0.0036), Unit::ratio) == "0.0072 V/V");
   CHECK(uncertainty_text(measured(1e-3, 6e-6), Unit::volt) == "12 uV");
 }
 
