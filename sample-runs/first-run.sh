@@ -51,8 +51,8 @@ echo "  ..."
 some '$p'
 cat <<'TEXT'
 
-The same boards, and now dozens are NO-GO. (VOID is not a judgement of the board: nothing was
-missed, but a reading was less certain than its limit allows, so the board must be tried again.)
+The same boards, and now dozens are NO-GO. (VOID would say nothing of the board: nothing was
+missed, but jig, data or person left the trial in doubt, and the board must be tried again.)
 
 3. What do they have in common? Ask which reels one of them carries ...
 
