@@ -2,7 +2,10 @@
 #include <fmt/format.h>
 
 #include <CLI/CLI.hpp>
+#include <algorithm>
+#include <optional>
 
+#include "base/nearest.hpp"
 #include "base/source.hpp"
 #include "sequencer/station_file.hpp"
 #include "station/commands.hpp"
@@ -23,6 +26,22 @@ bool split_answer(const std::string& word, std::pair<std::string, std::string>& 
   return true;
 }
 
+/// The first word that is no option, when it is no command either: what to write instead.
+std::optional<std::string> unknown_command(const CLI::App& app, int argc, char** argv) {
+  std::vector<std::string> known;
+  for (const CLI::App* command : app.get_subcommands({})) known.push_back(command->get_name());
+  for (int i = 1; i < argc; ++i) {
+    const std::string word = argv[i];
+    if (word == "--store" || word == "--station") ++i;
+    if (word.starts_with('-')) continue;
+    if (std::find(known.begin(), known.end(), word) != known.end()) return std::nullopt;
+    const auto near = nearest(word, known);
+    return fmt::format("unknown command \"{}\": {}", printable(word),
+                       near ? fmt::format("did you mean \"{}\"?", *near) : fmt::format("known are {}", listed(known)));
+  }
+  return std::nullopt;
+}
+
 }  // namespace
 
 int main(int argc, char** argv) {
@@ -30,6 +49,7 @@ int main(int argc, char** argv) {
   app.set_version_flag("--version", "jigwright " JIGWRIGHT_VERSION);
   app.footer(exit_help);
   app.require_subcommand(1);
+  app.fallthrough();  // --store and --station may stand behind the command too
 
   std::string station_path;
   std::string store;
@@ -44,9 +64,10 @@ int main(int argc, char** argv) {
   auto* order = try_command->add_option("--order", trying.order, "every board of this order (simulated jig)");
   serial->excludes(order);
   try_command->add_option("--operator", trying.operator_name, "who tries, for the record");
-  try_command->add_option("--fault", trying.faults, "a fault of the simulated jig; `jigwright faults` lists them");
+  try_command->add_option("--fault", trying.faults, "a fault of the simulated jig; `jigwright faults` lists them")
+      ->allow_extra_args(false);
   try_command->add_option("--seed", trying.seed, "seed of the simulated noise");
-  try_command->add_option("--answer", answers, "STEP=ANSWER to a question of the plan");
+  try_command->add_option("--answer", answers, "STEP=ANSWER to a question of the plan")->allow_extra_args(false);
   try_command->add_flag("--real-time", trying.real_time, "run on the real clock, not on virtual time");
   try_command->add_flag("--json", trying.json,
                         "one JSON event a line; questions are answered on standard input by {\"answer\": ...}");
@@ -81,6 +102,10 @@ int main(int argc, char** argv) {
   try {
     app.parse(argc, argv);
   } catch (const CLI::ParseError& error) {
+    if (const auto advice = unknown_command(app, argc, argv)) {
+      fmt::print(stderr, "jigwright: {}\n", *advice);
+      return exit_usage;
+    }
     return app.exit(error) == 0 ? exit_go : exit_usage;
   }
   for (const std::string& word : answers) {

@@ -124,9 +124,23 @@ class Run {
   bool store_failed_{false};
 };
 
+/// A serial goes onto screens, labels and into lists: nothing in it may drive a terminal or end a line.
+Result<Done> check_serial(const std::string& serial) {
+  const auto bad = [&](std::string what) {
+    return Error{Error::Kind::usage, std::move(what), "--serial", "scan or type the board's own serial"};
+  };
+  if (serial.size() > 64) return bad("the serial is longer than 64 characters: two scans run together?");
+  if (printable(serial) != serial)
+    return bad(fmt::format("the serial \"{}\" holds control characters", printable(serial)));
+  if (serial.find_first_not_of(' ') == std::string::npos) return bad("the serial is empty");
+  return Done{};
+}
+
 }  // namespace
 
 int try_boards(const TryOptions& options) {
+  if (options.order.empty())
+    if (const auto sound = check_serial(options.serial); !sound.ok()) return fail(sound.error());
   Faults faults;
   const auto plan = read_plan(options.plan, faults);
   std::shared_ptr<const Scenario> scenario;

@@ -115,8 +115,8 @@ class TextWatcher final : public Watcher {
   void run_ended(double wall_s) override {
     wipe();
     if (detail_ == Detail::findings) return;
-    fmt::print(out_, "{} boards: {} GO, {} NO-GO, {} VOID, in {:.1f} s\n", tally_.trials(), tally_.go, tally_.no_go,
-               tally_.voids, wall_s);
+    fmt::print(out_, "{} board{}: {} GO, {} NO-GO, {} VOID, in {:.1f} s\n", tally_.trials(),
+               tally_.trials() == 1 ? "" : "s", tally_.go, tally_.no_go, tally_.voids, wall_s);
     if (tally_.not_recorded > 0) fmt::print(out_, "{} of them NOT RECORDED\n", tally_.not_recorded);
   }
 

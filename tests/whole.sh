@@ -32,7 +32,10 @@ expect 2 "lid" try plan-b.toml --serial TB3-0001 --fault lid-open-after=60
 expect 4 "probe-open" try plan-b.toml --serial TB3-0001 --fault prob-open:OUT
 expect 4 "no board of order" try plan-b.toml --order WO-1014
 expect 3 "can't read" try no-such-plan.toml --serial TB3-0001
-expect 4 "" try plan-b.toml
+expect 4 "name --serial" try plan-b.toml
+expect 4 "did you mean \"try\"" tray plan-b.toml
+expect 4 "control characters" try plan-b.toml --serial "$(printf "TB3\033[31m")"
+expect 4 "longer than 64" try plan-b.toml --serial "$(printf "%080d" 1)"
 expect 0 "Where the time goes" lint plan-b.toml
 expect 0 "under-load/" lint --settings plan-b.toml
 expect 0 '"settings"' lint --json plan-b.toml
