@@ -3,8 +3,8 @@
 #include <fmt/format.h>
 
 #include <algorithm>
-#include <cmath>
 
+#include "sequencer/evaluation.hpp"
 #include "sequencer/raw_readings.hpp"
 
 namespace jigwright {
@@ -13,189 +13,91 @@ namespace jigwright {
 class Trials::Body {
  public:
   Body(Trials& trials, Player& player, int nest)
-      : trials_(trials), plan_(*trials.plan_), expanded_(plan_.full), player_(player), nest_(nest) {
-    records_.reserve(expanded_.settings.size());
-    judged_.reserve(expanded_.metrics.size());
-    found_.resize(expanded_.metrics.size(), false);
+      : trials_(trials), plan_(*trials.plan_), player_(player), nest_(nest), evaluation_(plan_) {
     began_ = trials_.bench_.clock().now();
   }
 
+  /// Phase by phase and step by step, until the plan's end or whatever comes first.
   Task<Done> play() {
-    const auto& settings = expanded_.settings;
-    for (std::size_t first = 0; first < settings.size() && !over_;) {
+    const auto& settings = plan_.full.settings;
+    for (std::size_t first = 0; first < settings.size() && !evaluation_.over();) {
       std::size_t last = first + 1;
       while (last < settings.size() && settings[last].step == settings[first].step &&
              settings[last].phase == settings[first].phase)
         ++last;
-      if (settings[first].phase == Phase::powered && missed_any()) {
-        end(fmt::format("not powered after \"{}\" missed its limit", label(first_missed_name())));
-        break;
+      if (settings[first].phase == Phase::powered) {
+        const std::string missed = evaluation_.power_forbidden_by();
+        if (!missed.empty()) evaluation_.end(fmt::format("not powered after \"{}\" was not met", missed));
       }
-      co_await block(first, last);
+      if (!evaluation_.over()) co_await block(first, last);
       first = last;
     }
     co_return Done{};
   }
 
-  std::vector<SettingRecord> records_;
-  std::vector<Judged> judged_;
-  std::vector<FindingRow> extra_;  ///< known values read because a step was in doubt
-  Ended ended_;
+  Evaluation& evaluation() { return evaluation_; }
 
  private:
   /// One step's settings of one phase, then its findings.
   Task<Done> block(std::size_t first, std::size_t last) {
-    const std::size_t first_record = records_.size();
-    bool proved = false;
-    for (std::size_t i = first; i < last && !over_; ++i) {
-      const Setting& setting = expanded_.settings[i];
-      if (setting.only_if_doubtful && !doubtful(first_record)) continue;
-      if (seconds(trials_.bench_.clock().now() - began_) > plan_.plan.time_limit_s) {
-        end(fmt::format("the trial took longer than {}", format_quantity(plan_.plan.time_limit_s, Unit::second)));
-        break;
-      }
+    const std::size_t records_before = evaluation_.records().size();
+    for (std::size_t i = first; i < last && !evaluation_.over(); ++i) {
+      const Setting& setting = plan_.full.settings[i];
+      if (setting.only_if_doubtful && !evaluation_.doubtful()) continue;
+      if (too_long()) break;
       tell(static_cast<int>(i));
       const auto played = co_await player_.play(setting, static_cast<int>(i), on_reading_);
       if (!played.ok()) {
-        end(describe(played.error()));
+        evaluation_.end(describe(played.error()));
         break;
       }
-      records_.push_back(played.value());
-      if (setting.only_if_doubtful) proved = known_value_right(played.value());
+      evaluation_.add(played.value());
+      if (setting.only_if_doubtful) tell_known_value();
     }
-    if (records_.size() > first_record) reduce(expanded_.settings[first].step, proved);
+    if (evaluation_.records().size() == records_before) co_return Done{};
+    const std::size_t judged_before = evaluation_.judged().size();
+    evaluation_.reduce(plan_.full.settings[first].step);
+    tell_findings(judged_before);
     co_return Done{};
   }
 
-  void end(std::string reason) {
-    over_ = true;
-    if (ended_.early) return;
-    ended_.early = true;
-    ended_.reason = std::move(reason);
-  }
-
-  bool doubtful(std::size_t first_record) const {
-    return std::any_of(
-        records_.begin() + static_cast<std::ptrdiff_t>(first_record), records_.end(), [](const SettingRecord& r) {
-          return r.ended == Next::gave_up || std::any_of(r.readings.begin(), r.readings.end(),
-                                                         [](const Reading& x) { return x.state != ReadingState::ok; });
-        });
-  }
-
-  /// Records the known value as a finding of the step, and says whether the meter is right.
-  bool known_value_right(const SettingRecord& record) {
-    const Setting& setting = expanded_.settings[static_cast<std::size_t>(record.setting)];
-    const Jig& jig = *plan_.jig;
-    const Accuracy& range = jig.accuracy(std::get<ReadMeter>(setting.act).setup);
-    const double bound_V =
-        range.of_reading * std::abs(jig.reference_V) + range.of_range * range.range + 2 * jig.reference_u_V;
-    FindingRow row;
-    row.metric.name = {plan_.plan.steps[static_cast<std::size_t>(setting.step)]->id, "known_value", setting.id};
-    row.metric.unit = Unit::volt;
-    row.metric.about = About::jig;
-    Limit limit;
-    limit.specification = {jig.reference_V - bound_V, jig.reference_V + bound_V};
-    limit.applied = limit.specification;
-    limit.nominal = jig.reference_V;
-    limit.guard = Guard::none;
-    limit.reason = "the meter's accuracy and the reference's uncertainty";
-    row.limit = limit;
-    Finding& finding = row.judged.finding;
-    const bool all_ok = !record.readings.empty() && record.ended == Next::enough &&
-                        std::all_of(record.readings.begin(), record.readings.end(),
-                                    [](const Reading& r) { return r.state == ReadingState::ok; });
-    finding.n = static_cast<int>(record.readings.size());
-    if (all_ok) {
-      double sum = 0;
-      for (const Reading& r : record.readings) sum += r.value;
-      finding.value = sum / finding.n;
-      finding.u = bound_V / std::sqrt(3.0);
-      finding.state = FindingState::measured;
-    }
-    row.judged = judge(finding, &*row.limit, false);
-    const bool right = row.judged.verdict == Verdict::met;
-    if (!right) end("the meter does not read its own known value right");
-    trials_.observer_.finding(nest_, row.metric, &*row.limit, row.judged);
-    extra_.push_back(std::move(row));
-    return right;
-  }
-
-  /// New findings of this step from all its records so far; judges each; ends the trial where that must be.
-  void reduce(int step, bool proved) {
-    own_.clear();
-    for (const SettingRecord& r : records_) {
-      const Setting& s = expanded_.settings[static_cast<std::size_t>(r.setting)];
-      if (s.step == step && s.position >= 0) own_.push_back(r);
-    }
-    const Step& of = *plan_.plan.steps[static_cast<std::size_t>(step)];
-    const int base = expanded_.first_metric[static_cast<std::size_t>(step)];
-    for (Finding& finding : of.reduce(Depth::full, own_, expanded_.settings)) {
-      finding.metric += base;
-      const auto at = static_cast<std::size_t>(finding.metric);
-      if (found_[at]) continue;
-      found_[at] = true;
-      const std::optional<Limit>& limit = expanded_.limits[at];
-      judged_.push_back(judge(finding, limit ? &*limit : nullptr, proved));
-      tell_finding(judged_.back());
-      consider(judged_.back());
-    }
-  }
-
-  void consider(const Judged& j) {
-    const Metric& metric = expanded_.metrics[static_cast<std::size_t>(j.finding.metric)];
-    const bool bad = j.verdict == Verdict::missed || j.verdict == Verdict::invalid || j.verdict == Verdict::unsure;
-    if (!bad) return;
-    if (metric.about == About::jig)
-      over_ = true;  // the judgement names the finding
-    else if (plan_.plan.stop_at_first_miss && j.verdict == Verdict::missed)
-      end("stopped at the first miss, as the plan says");
-  }
-
-  /// Without power, whatever is bad forbids power.
-  bool missed_any() const {
-    return std::any_of(judged_.begin(), judged_.end(), [&](const Judged& j) {
-      const auto phase_bad =
-          j.verdict == Verdict::missed || j.verdict == Verdict::invalid || j.verdict == Verdict::unsure;
-      return phase_bad && !powered_yet();
-    });
-  }
-  bool powered_yet() const {
-    return std::any_of(records_.begin(), records_.end(), [&](const SettingRecord& r) {
-      return expanded_.settings[static_cast<std::size_t>(r.setting)].phase == Phase::powered;
-    });
-  }
-  const MetricName& first_missed_name() const {
-    for (const Judged& j : judged_)
-      if (j.verdict != Verdict::met && j.verdict != Verdict::recorded)
-        return expanded_.metrics[static_cast<std::size_t>(j.finding.metric)].name;
-    return expanded_.metrics.front().name;
+  bool too_long() {
+    if (seconds(trials_.bench_.clock().now() - began_) <= plan_.plan.time_limit_s) return false;
+    evaluation_.end(
+        fmt::format("the trial took longer than {}", format_quantity(plan_.plan.time_limit_s, Unit::second)));
+    return true;
   }
 
   void tell(int index) {
     progress_.nest = nest_;
     progress_.setting = index;
-    progress_.settings = static_cast<int>(expanded_.settings.size());
+    progress_.settings = static_cast<int>(plan_.full.settings.size());
     progress_.elapsed_s = seconds(trials_.bench_.clock().now() - began_);
-    progress_.remaining_s = std::max(0.0, expanded_.usual_s - progress_.elapsed_s);
-    const Setting& setting = expanded_.settings[static_cast<std::size_t>(index)];
+    progress_.remaining_s = std::max(0.0, plan_.full.usual_s - progress_.elapsed_s);
+    const Setting& setting = plan_.full.settings[static_cast<std::size_t>(index)];
     trials_.observer_.setting_started(progress_, plan_.plan.steps[static_cast<std::size_t>(setting.step)]->id, setting);
   }
 
-  void tell_finding(const Judged& j) {
-    const auto at = static_cast<std::size_t>(j.finding.metric);
-    const std::optional<Limit>& limit = expanded_.limits[at];
-    trials_.observer_.finding(nest_, expanded_.metrics[at], limit ? &*limit : nullptr, j);
+  void tell_known_value() {
+    const FindingRow& row = evaluation_.known_values().back();
+    trials_.observer_.finding(nest_, row.metric, &*row.limit, row.judged);
+  }
+
+  void tell_findings(std::size_t from) {
+    for (std::size_t i = from; i < evaluation_.judged().size(); ++i) {
+      const Judged& j = evaluation_.judged()[i];
+      const auto at = static_cast<std::size_t>(j.finding.metric);
+      const std::optional<Limit>& limit = plan_.full.limits[at];
+      trials_.observer_.finding(nest_, plan_.full.metrics[at], limit ? &*limit : nullptr, j);
+    }
   }
 
   Trials& trials_;
   const ReadyPlan& plan_;
-  const Expanded& expanded_;
   Player& player_;
   int nest_;
+  Evaluation evaluation_;
   Duration began_;
-  bool over_{false};  ///< nothing more is played; ended_ holds a reason only where no finding is one
-  std::vector<bool> found_;
-  std::vector<SettingRecord> own_;
   Progress progress_;
   Player::OnReading on_reading_ = [this](const Setting& setting, const Reading& reading) {
     trials_.observer_.reading(progress_, setting, reading);
@@ -243,41 +145,6 @@ Task<Result<Done>> Trials::identify() {
   co_return Done{};
 }
 
-namespace {
-
-std::vector<FindingRow> rows_of(const Expanded& expanded, const std::vector<Judged>& judged) {
-  std::vector<FindingRow> rows;
-  rows.reserve(expanded.metrics.size());
-  std::vector<const Judged*> of(expanded.metrics.size(), nullptr);
-  for (const Judged& j : judged) of[static_cast<std::size_t>(j.finding.metric)] = &j;
-  for (std::size_t i = 0; i < expanded.metrics.size(); ++i) {
-    FindingRow row;
-    row.metric = expanded.metrics[i];
-    row.limit = expanded.limits[i];
-    if (of[i] != nullptr) {
-      row.judged = *of[i];
-    } else {
-      row.judged.finding.metric = static_cast<int>(i);
-      row.judged.finding.state = FindingState::skipped;
-      row.judged.verdict = Verdict::no_evidence;
-    }
-    rows.push_back(std::move(row));
-  }
-  return rows;
-}
-
-Outcome outcome_of(const Expanded& expanded, const std::vector<Judged>& judged, const Ended& ended) {
-  const std::size_t n = expanded.limits.size();
-  const std::unique_ptr<bool[]> limited(new bool[n]);
-  for (std::size_t i = 0; i < n; ++i) limited[i] = expanded.limits[i].has_value();
-  Outcome outcome = judge_trial(expanded.metrics, {limited.get(), n}, judged, ended);
-  // Rows of findings stand in the order of metrics.
-  if (outcome.deciding >= 0) outcome.deciding = judged[static_cast<std::size_t>(outcome.deciding)].finding.metric;
-  return outcome;
-}
-
-}  // namespace
-
 TrialStart Trials::start_of(int nest, std::string serial, std::string order) const {
   TrialStart start;
   start.serial = std::move(serial);
@@ -299,22 +166,21 @@ TrialStart Trials::start_of(int nest, std::string serial, std::string order) con
   return start;
 }
 
-void Trials::conclude(Body& body, const std::string& unsafe, TrialEnd& end) const {
-  end.outcome = outcome_of(plan_->full, body.judged_, body.ended_);
+void Trials::conclude(const Evaluation& evaluation, const std::string& unsafe, TrialEnd& end) const {
+  end.outcome = evaluation.outcome();
   if (!unsafe.empty() && end.outcome.judgement == Judgement::go) {
     end.outcome = {};
     end.outcome.void_reason = "the safe state is not confirmed: " + unsafe;
   }
   end.safe_state = unsafe;
-  end.findings = rows_of(plan_->full, body.judged_);
-  for (FindingRow& row : body.extra_) end.findings.push_back(std::move(row));
+  end.findings = evaluation.rows();
   for (const StepKind* kind : plan_->plan.kinds) {
     const std::pair<std::string, int> version{std::string(kind->name), kind->reduce_version};
     if (std::find(end.reduce_versions.begin(), end.reduce_versions.end(), version) == end.reduce_versions.end())
       end.reduce_versions.push_back(version);
   }
   end.readings_format = raw_readings_format;
-  end.readings = encode_readings(body.records_, plan_->full.settings);
+  end.readings = encode_readings(evaluation.records(), plan_->full.settings);
 }
 
 /// A NO-GO's action is its step's own text. A VOID says nothing of the board: the text of a step that only looks at the
@@ -339,13 +205,13 @@ Task<Done> Trials::play(Body& body, Player& player, int nest, const std::string&
   const auto known = co_await identify();
   const std::string unsafe = co_await player.make_safe();
   if (!placed.ok()) {
-    body.ended_ = {true, describe(placed.error())};
+    body.evaluation().end(describe(placed.error()));
   } else if (!known.ok()) {
-    body.ended_ = {true, describe(known.error())};
+    body.evaluation().end(describe(known.error()));
   } else if (!unsafe.empty()) {
-    body.ended_ = {true, "no safe state at the start: " + unsafe};
+    body.evaluation().end("no safe state at the start: " + unsafe);
   } else if (stop_.set) {
-    body.ended_ = {true, stop_.reason};
+    body.evaluation().end(stop_.reason);
   } else {
     co_await body.play();
   }
@@ -371,13 +237,13 @@ Task<TrialResult> Trials::run(int nest, std::string serial, std::string order) {
   try {
     co_await play(body, player, nest, start.serial, opened.value().attempt);
   } catch (const std::exception& fault) {
-    body.ended_ = {true, std::string("a fault of this program: ") + fault.what()};
+    body.evaluation().end(std::string("a fault of this program: ") + fault.what());
   }
   // Every path comes here: the nest is made safe whatever the body said.
   const std::string unsafe = co_await player.make_safe();
   end.instruments = identities_;
   end.took_ms = std::chrono::duration_cast<std::chrono::milliseconds>(bench_.clock().now() - began).count();
-  conclude(body, unsafe, end);
+  conclude(body.evaluation(), unsafe, end);
 
   std::string action = next_action(end.outcome);
   const auto finished = co_await recorder_.finish(opened.value(), end);

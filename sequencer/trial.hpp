@@ -10,6 +10,7 @@
 #include <string>
 
 #include "fixtures/instruments.hpp"
+#include "sequencer/evaluation.hpp"
 #include "sequencer/leases.hpp"
 #include "sequencer/observer.hpp"
 #include "sequencer/plan.hpp"
@@ -54,7 +55,7 @@ class Trials {
   TrialStart start_of(int nest, std::string serial, std::string order) const;
   Task<Result<Done>> identify();
   Task<Done> play(Body& body, Player& player, int nest, const std::string& serial, int attempt);
-  void conclude(Body& body, const std::string& unsafe, TrialEnd& end) const;
+  void conclude(const Evaluation& evaluation, const std::string& unsafe, TrialEnd& end) const;
   std::string next_action(const Outcome& outcome) const;
 
   asio::io_context& io_;

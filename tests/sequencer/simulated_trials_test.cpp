@@ -327,3 +327,60 @@ TEST_CASE("a stop at any setting is VOID with the reason, and the safe state is 
     CHECK(r.recorded);
   }
 }
+
+TEST_CASE("stored readings give every finding and the judgement again, to the last bit") {
+  struct Case {
+    const char* serial;
+    std::vector<std::string> faults;
+  };
+  for (const Case& c : {Case{"TB3-0001", {}}, Case{"TB3-0180", {}}, Case{"TB3-0001", {"output-at-rail"}},
+                        Case{"TB3-0001", {"load-missing:1 nF"}}, Case{"TB3-0001", {"probe-open:OUT"}}}) {
+    const std::string first_fault = c.faults.empty() ? "" : c.faults.front();
+    CAPTURE(first_fault);
+    const TrialResult played = try_one(c.faults, c.serial);
+    const auto stored = decode_readings(played.end.readings);
+    REQUIRE(stored.ok());
+    // The plan is expanded again, as a later program would.
+    const auto plan = with_nests(1);
+    const auto again = replay(*plan, stored.value(), Ended{});
+    REQUIRE(again.ok());
+    CHECK(again.value().outcome().judgement == judgement(played));
+    const std::vector<FindingRow> rows = again.value().rows();
+    REQUIRE(rows.size() == played.end.findings.size());
+    for (std::size_t i = 0; i < rows.size(); ++i) {
+      CAPTURE(label(rows[i].metric.name));
+      const Judged& a = played.end.findings[i].judged;
+      const Judged& b = rows[i].judged;
+      CHECK(rows[i].metric.name == played.end.findings[i].metric.name);
+      CHECK(a.verdict == b.verdict);
+      CHECK(a.finding.state == b.finding.state);
+      CHECK(a.finding.n == b.finding.n);
+      CHECK((a.finding.value == b.finding.value || (std::isnan(a.finding.value) && std::isnan(b.finding.value))));
+      CHECK((a.finding.u == b.finding.u || (std::isnan(a.finding.u) && std::isnan(b.finding.u))));
+    }
+  }
+}
+
+TEST_CASE("an output beyond the meter is a miss where the meter has just read its known value right") {
+  const TrialResult r = try_one({"output-at-rail"});
+  CHECK(judgement(r) == Judgement::no_go);
+  bool over_range_missed = false, known_value_read = false;
+  for (const FindingRow& row : r.end.findings) {
+    over_range_missed = over_range_missed ||
+                        (row.judged.finding.state == FindingState::over_range && row.judged.verdict == Verdict::missed);
+    known_value_read =
+        known_value_read || (row.metric.name.name == "known_value" && row.judged.verdict == Verdict::met);
+  }
+  CHECK(over_range_missed);
+  CHECK(known_value_read);
+}
+
+TEST_CASE("readings of another plan are refused") {
+  const TrialResult played = try_one({});
+  const auto stored = decode_readings(played.end.readings);
+  REQUIRE(stored.ok());
+  Faults faults;
+  const auto plan_a = read_plan(SOURCE_FOLDER "/sample-runs/plan-a.toml", faults);
+  REQUIRE(plan_a);
+  CHECK_FALSE(replay(*plan_a, stored.value(), Ended{}).ok());
+}
