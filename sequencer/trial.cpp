@@ -180,7 +180,7 @@ void Trials::conclude(const Evaluation& evaluation, const std::string& unsafe, T
       end.reduce_versions.push_back(version);
   }
   end.readings_format = raw_readings_format;
-  end.readings = encode_readings(evaluation.records(), plan_->full.settings);
+  end.readings = encode_readings(evaluation.records(), plan_->full.settings, *plan_->jig);
 }
 
 /// A NO-GO's action is its step's own text. A VOID says nothing of the board: the text of a step that only looks at the
