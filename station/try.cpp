@@ -7,6 +7,7 @@
 #include <boost/asio/signal_set.hpp>
 #include <chrono>
 #include <csignal>
+#include <cstdio>
 #include <deque>
 
 #include "base/nearest.hpp"
@@ -53,12 +54,15 @@ class Run {
                             ::isatty(STDIN_FILENO) == 1 && ::isatty(STDOUT_FILENO) == 1)),
         recorder_(make_recorder(store, *clock_, io_)),
         trials_(io_, *bench_, plan_, *watcher_, *person_, *recorder_, setup()),
-        signals_(io_, SIGINT, SIGTERM) {}
+        signals_(io_, SIGINT, SIGTERM, SIGHUP) {
+    // A reader that goes away must not kill a trial before the jig is safe.
+    std::signal(SIGPIPE, SIG_IGN);
+  }
 
   int play(std::deque<std::string> serials) {
     serials_ = std::move(serials);
     signals_.async_wait([this](const boost::system::error_code& fault, int) {
-      if (!fault) trials_.stop("stopped at the station (Ctrl-C or a request to end)");
+      if (!fault) trials_.stop("stopped at the station (Ctrl-C, or a request to end)");
     });
     const auto began = std::chrono::steady_clock::now();
     running_ = plan_->jig->nests;
@@ -74,6 +78,7 @@ class Run {
       std::string serial = std::move(serials_.front());
       serials_.pop_front();
       const TrialResult result = co_await trials_.run(nest, std::move(serial), options_.order);
+      if (std::fflush(stdout) != 0 || std::ferror(stdout) != 0) trials_.stop("nobody reads the output any more");
       if (!result.recorded) {
         store_failed_ = true;
         serials_.clear();

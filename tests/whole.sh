@@ -70,6 +70,12 @@ same "trials open after all that" "$(ask "select count(*) from trial where state
 same "integrity" "$(ask "pragma integrity_check")" ok
 same "recorded as simulated only" "$(ask "select count(*) from trial where origin <> 1")" 0
 
+# Whoever reads the output goes away: the trial under way ends safe and on record, and no further board is tried.
+before=$(ask "select count(*) from trial")
+"$jigwright" --store "$work/store.db" try plan-b.toml --order WO-1041 --json 2>/dev/null </dev/null | head -n 1 >/dev/null
+same "trials open after the reader went away" "$(ask "select count(*) from trial where state = 0")" 0
+[ "$(ask "select count(*) from trial")" -lt $((before + 200)) ] && good || bad "the order went on without a reader"
+
 # Killed in mid-trial: the open trial shows as VOID.
 "$jigwright" --store "$work/store.db" try plan-b.toml --serial TB3-0007 --real-time >/dev/null 2>&1 </dev/null &
 pid=$!

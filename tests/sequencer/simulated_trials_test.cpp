@@ -50,7 +50,7 @@ const std::shared_ptr<const Scenario>& scenario() {
 }
 
 /// The same plan on a jig with this many nests.
-std::shared_ptr<const ReadyPlan> with_nests(int nests) {
+std::shared_ptr<ReadyPlan> with_nests(int nests) {
   auto jig = std::make_shared<Jig>(*plan_b()->jig);
   jig->nests = nests;
   auto out = std::make_shared<ReadyPlan>();
@@ -383,4 +383,30 @@ TEST_CASE("readings of another plan are refused") {
   const auto plan_a = read_plan(SOURCE_FOLDER "/sample-runs/plan-a.toml", faults);
   REQUIRE(plan_a);
   CHECK_FALSE(replay(*plan_a, stored.value(), Ended{}).ok());
+}
+
+TEST_CASE("a plan that stops at the first miss plays nothing after it, and what was not read is no evidence") {
+  const auto plan = with_nests(1);
+  plan->plan.stop_at_first_miss = true;
+  Tried tried = try_boards(plan, {"TB3-0001"}, {"rail-low"});
+  const TrialResult& r = tried.of.at("TB3-0001");
+  CHECK(judgement(r) == Judgement::no_go);
+  for (const FindingRow& row : r.end.findings) {
+    if (row.metric.name.step != "gain" && row.metric.name.name != "load_delta") continue;
+    CHECK(row.judged.finding.state == FindingState::skipped);
+    CHECK(row.judged.verdict == Verdict::no_evidence);
+  }
+  // The same board without that option is read to the end.
+  const TrialResult whole = try_one({"rail-low"});
+  for (const FindingRow& row : whole.end.findings)
+    if (row.metric.name.name == "load_delta") CHECK(row.judged.finding.state == FindingState::measured);
+}
+
+TEST_CASE("a trial longer than its plan allows is VOID and says so") {
+  const auto plan = with_nests(1);
+  plan->plan.time_limit_s = 3;
+  Tried tried = try_boards(plan, {"TB3-0001"}, {});
+  const TrialResult& r = tried.of.at("TB3-0001");
+  CHECK(judgement(r) == Judgement::void_);
+  CHECK(r.end.outcome.void_reason.find("took longer than 3 s") != std::string::npos);
 }
