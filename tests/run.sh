@@ -26,6 +26,9 @@ build release jigwright benchmark
 step "the whole program, as its users call it"
 sh tests/whole.sh build/jigwright
 
+step "kills of the running program"
+sh tests/kills.sh build/jigwright
+
 step "benchmark"
 build/benchmark
 
