@@ -4,6 +4,7 @@
 
 #include <chrono>
 
+#include "db/free_space.hpp"
 #include "db/schema.hpp"
 #include "db/trial_writer.hpp"
 
@@ -32,6 +33,7 @@ Result<std::unique_ptr<Store>> Store::open(const std::string& path, const StoreO
   const bool create = write && options.create;
   if (!create && missing(path))
     return Error{Error::Kind::store, "there is no store here", path, "check the path, or try a board first"};
+  if (const auto writable = write ? check_writable(path) : Done{}; !writable) return writable.error();
   auto database =
       Database::open(path, write ? Database::Access::write : Database::Access::read, create, options.busy_ms);
   if (!database) return database.error();
@@ -43,6 +45,7 @@ Result<std::unique_ptr<Store>> Store::open(const std::string& path, const StoreO
 }
 
 Result<OpenTrial> Store::begin_trial(const TrialStart& start) {
+  if (const auto room = check_space(database_->path()); !room) return room.error();
   return writer_->begin(start);
 }
 
