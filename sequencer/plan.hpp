@@ -65,6 +65,12 @@ struct ReadyPlan {
 /// nullptr when any fault was added; warnings and notes may stand in `faults` all the same.
 std::shared_ptr<const ReadyPlan> read_plan(const std::string& plan_path, Faults& faults);
 
+/// The same from texts, as the store kept them; no file is read.
+struct PlanTexts {
+  std::shared_ptr<const SourceText> plan, jig, limits;
+};
+std::shared_ptr<const ReadyPlan> read_plan_texts(const PlanTexts& texts, Faults& faults);
+
 /// The pieces, for tests and later readers. `folder` resolves the files that the plan names.
 Plan read_plan_tree(const Node& root, const std::string& folder, std::shared_ptr<const Jig> jig, Faults& faults);
 LimitSet read_limits_tree(const Node& root, Faults& faults);

@@ -3,6 +3,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <functional>
 
 #include "base/nearest.hpp"
 #include "sequencer/plan.hpp"
@@ -306,25 +307,45 @@ Plan read_plan_tree(const Node& root, const std::string& folder, std::shared_ptr
   return PlanReader(root, folder, std::move(jig), faults).read();
 }
 
-std::shared_ptr<const ReadyPlan> read_plan(const std::string& plan_path, Faults& faults) {
-  const std::string folder = folder_of(plan_path);
+namespace {
+
+/// The tree of the file that the plan names at [plan] KEY, or nothing.
+using TreeOf = std::function<std::optional<Node>(std::string_view key)>;
+
+std::shared_ptr<const ReadyPlan> assemble(const Node& root, const std::string& folder, const TreeOf& tree,
+                                          Faults& faults) {
   const std::size_t before = faults.count(Severity::fault);
-  SourceRegion nowhere;
-  const auto root = tree_of(plan_path, nowhere, faults);
-  if (!root) return nullptr;
   auto ready = std::make_shared<ReadyPlan>();
-  if (const auto jig = named_tree(*root, "jig", folder, faults))
-    ready->jig = std::make_shared<const Jig>(read_jig(*jig, faults));
-  ready->plan = read_plan_tree(*root, folder, ready->jig, faults);
+  if (const auto jig = tree("jig")) ready->jig = std::make_shared<const Jig>(read_jig(*jig, faults));
+  ready->plan = read_plan_tree(root, folder, ready->jig, faults);
   const bool plan_sound = ready->jig && faults.count(Severity::fault) == before;
   const std::size_t before_limits = faults.count(Severity::fault);
-  const auto limits = named_tree(*root, "limits", folder, faults);
+  const auto limits = tree("limits");
   if (limits) ready->limits = read_limits_tree(*limits, faults);
   const bool limits_sound = limits && faults.count(Severity::fault) == before_limits;
   if (plan_sound && limits) expand(*ready, limits_sound, faults);
-  if (faults.count(Severity::fault) == before) check_time(*ready, *root, faults);
+  if (faults.count(Severity::fault) == before) check_time(*ready, root, faults);
   if (faults.count(Severity::fault) != before) return nullptr;
   return ready;
+}
+
+}  // namespace
+
+std::shared_ptr<const ReadyPlan> read_plan(const std::string& plan_path, Faults& faults) {
+  const std::string folder = folder_of(plan_path);
+  SourceRegion nowhere;
+  const auto root = tree_of(plan_path, nowhere, faults);
+  if (!root) return nullptr;
+  return assemble(
+      *root, folder, [&](std::string_view key) { return named_tree(*root, key, folder, faults); }, faults);
+}
+
+std::shared_ptr<const ReadyPlan> read_plan_texts(const PlanTexts& texts, Faults& faults) {
+  const auto root = parse_toml(texts.plan, faults);
+  if (!root) return nullptr;
+  return assemble(
+      *root, {}, [&](std::string_view key) { return parse_toml(key == "jig" ? texts.jig : texts.limits, faults); },
+      faults);
 }
 
 }  // namespace jigwright
