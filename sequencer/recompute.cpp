@@ -60,7 +60,7 @@ Result<Evaluation> evaluate(const ReadyPlan& plan, const StoredTrial& trial, std
   return replay(plan, records, early);
 }
 
-Difference compare(const std::vector<FindingRow>& rows, const StoredTrial& trial) {
+Disagreement compare(const std::vector<FindingRow>& rows, const StoredTrial& trial) {
   if (rows.size() != trial.findings.size())
     return {true, fmt::format("{} findings in the store, {} worked out again", trial.findings.size(), rows.size())};
   for (const FindingRow& row : rows) {
@@ -76,23 +76,23 @@ Difference compare(const std::vector<FindingRow>& rows, const StoredTrial& trial
 
 }  // namespace
 
-Result<Difference> recompute(const ReadyPlan& plan, const StoredTrial& trial) {
+Result<Disagreement> recompute(const ReadyPlan& plan, const StoredTrial& trial) {
   if (trial.readings_format == 0) return cannot("raw readings are not there any more");
   if (trial.readings_format != raw_readings_format)
     return cannot("raw readings of a layout that this program does not read");
   if (!same_versions(plan, trial)) return cannot("another version of a step's arithmetic");
   const auto records = decode_readings(trial.readings);
-  if (!records.ok()) return Difference{true, records.error().what};
+  if (!records.ok()) return Disagreement{true, records.error().what};
   const auto evaluation = evaluate(plan, trial, records.value());
-  if (!evaluation.ok()) return Difference{true, evaluation.error().what};
-  const Difference findings = compare(evaluation.value().rows(), trial);
+  if (!evaluation.ok()) return Disagreement{true, evaluation.error().what};
+  const Disagreement findings = compare(evaluation.value().rows(), trial);
   if (findings.differs) return findings;
   Judgement judgement = evaluation.value().outcome().judgement;
   if (judgement == Judgement::go && !trial.unsafe.empty()) judgement = Judgement::void_;
   if (judgement != trial.judgement)
-    return Difference{true,
-                      fmt::format("{} in the store, {} worked out again", word(trial.judgement), word(judgement))};
-  return Difference{};
+    return Disagreement{true,
+                        fmt::format("{} in the store, {} worked out again", word(trial.judgement), word(judgement))};
+  return Disagreement{};
 }
 
 namespace {

@@ -13,14 +13,14 @@
 namespace jigwright {
 
 /// What is wrong with one trial, or nothing.
-struct Difference {
+struct Disagreement {
   bool differs{false};
   std::string what;  ///< "offset: offset (x100) is 0.11 mV in the store, 0.12 mV worked out again"
 };
 
 /// Pure. Error kind store when it can't be worked out again: readings gone or damaged, another version of a step's
 /// arithmetic, a plan that this program no longer reads; the reason is then counted, not a difference.
-Result<Difference> recompute(const ReadyPlan& plan, const StoredTrial& trial);
+Result<Disagreement> recompute(const ReadyPlan& plan, const StoredTrial& trial);
 
 struct Recomputed {
   std::int64_t agree{};
