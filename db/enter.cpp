@@ -3,11 +3,15 @@
 #include <fmt/format.h>
 
 #include <algorithm>
+#include <functional>
+#include <limits>
 #include <map>
 #include <unordered_map>
 #include <unordered_set>
 
 #include "base/nearest.hpp"
+#include "db/bodies.hpp"
+#include "db/journal.hpp"
 #include "db/lists.hpp"
 #include "db/names.hpp"
 #include "db/sqlite.hpp"
@@ -44,7 +48,7 @@ class Entering {
     check_reels();
     check_feeds();
   }
-  void write(UuidMaker& uuids, std::int64_t now_us);
+  void write(UuidMaker& uuids, std::int64_t now_us, const EnteredBy& by);
   std::vector<EnteredFile> counts() const;
 
  private:
@@ -87,6 +91,8 @@ class Entering {
   Id board_id(const std::string& serial);
   Id reel_id(const std::string& name) { return db_.first("SELECT id FROM reel WHERE name = ?", name).value_or(0); }
   Id lot_id(const ReelRow& row);
+  Id entry(const SourceRegion& region, const char* kind);
+  void write_journal(Id station, std::int64_t now_us);
   void write_boards();
   void write_reels();
   void write_feeds(UuidMaker& uuids, std::int64_t now_us);
@@ -101,6 +107,8 @@ class Entering {
   std::vector<std::pair<const BoardRow*, Fate>> boards_;
   std::vector<std::pair<const ReelRow*, Fate>> reel_rows_;
   std::vector<std::pair<const FeedRow*, Fate>> feeds_;
+  std::function<Id(const SourceText&, const char*)> note_;
+  std::map<const SourceText*, Id> entries_;  // files that brought something, and their records' rows
 };
 
 bool Entering::all_read(ListKind kind) const {
@@ -461,10 +469,33 @@ std::optional<std::int64_t> Entering::quantity_of(const std::string& reel) {
   return q.next() ? q.maybe_integer(0) : std::nullopt;
 }
 
-void Entering::write(UuidMaker& uuids, std::int64_t now_us) {
+void Entering::write(UuidMaker& uuids, std::int64_t now_us, const EnteredBy& by) {
+  note_ = [&, who = unless_empty(by.who)](const SourceText& file, const char* kind) {
+    const Uuid uuid = uuids.next(now_us / 1000);
+    db_.run("INSERT INTO entered(uuid, kind, name, who) VALUES(?, ?, ?, ?)", Blob{bytes(uuid)}, kind, file.name, who);
+    return db_.last_id();
+  };
   write_boards();
   write_reels();
   write_feeds(uuids, now_us);
+  if (!entries_.empty()) write_journal(station_row(db_, uuids, by.station, now_us), now_us);
+}
+
+/// The row of a file's record, made when the file first brings something.
+Id Entering::entry(const SourceRegion& region, const char* kind) {
+  const auto [at, fresh] = entries_.try_emplace(region.source.get());
+  if (fresh) at->second = note_(*region.source, kind);
+  return at->second;
+}
+
+void Entering::write_journal(Id station, std::int64_t now_us) {
+  Id first = std::numeric_limits<Id>::max();
+  for (const auto& [file, id] : entries_) first = std::min(first, id);
+  for (const auto& [id, body] : Bodies(db_).entered(first)) {
+    std::string uuid;
+    if (Query q = db_.query("SELECT uuid FROM entered WHERE id = ?", id); q.next()) uuid = q.text(0);
+    append_record(db_, station, RecordKind::list_entered, uuid, now_us, body.sha256);
+  }
 }
 
 Id Entering::order_id(const std::string& name) {
@@ -482,10 +513,13 @@ Id Entering::board_id(const std::string& serial) {
 void Entering::write_boards() {
   for (const auto& [row, fate] : boards_)
     if (fate == Fate::added)
-      db_.run("INSERT INTO build VALUES(?, ?, ?, ?)", order_id(row->order.text), row->number,
-              board_id(row->serial.text), unless_empty(row->panel.text));
+      db_.run("INSERT INTO build(ord, build_no, board, panel, entered) VALUES(?, ?, ?, ?, ?)",
+              order_id(row->order.text), row->number, board_id(row->serial.text), unless_empty(row->panel.text),
+              entry(row->serial.region, "boards"));
   for (const auto& [order, row] : products_)
-    db_.run("UPDATE product_order SET product = ? WHERE name = ? AND product IS NULL", row->product.text, order);
+    if (db_.first("SELECT 1 FROM product_order WHERE name = ? AND product IS NULL", order))
+      db_.run("UPDATE product_order SET product = ?, entered = ? WHERE name = ?", row->product.text,
+              entry(row->product.region, "boards"), order);
 }
 
 Id Entering::lot_id(const ReelRow& row) {
@@ -500,10 +534,10 @@ void Entering::write_reels() {
   for (const auto& [row, fate] : reel_rows_)
     if (fate == Fate::added)
       db_.run(
-          "INSERT INTO reel(name, lot, date_code, distributor, rereeled, quantity, marking) VALUES(?, ?, ?, ?, ?, ?, "
-          "?)",
+          "INSERT INTO reel(name, lot, date_code, distributor, rereeled, quantity, marking, entered) VALUES(?, ?, ?, "
+          "?, ?, ?, ?, ?)",
           row->reel.text, lot_id(*row), row->week, unless_empty(row->distributor.text), row->rereeled, row->quantity,
-          unless_empty(row->marking.text));
+          unless_empty(row->marking.text), entry(row->reel.region, "reels"));
 }
 
 void Entering::write_feeds(UuidMaker& uuids, std::int64_t now_us) {
@@ -511,10 +545,10 @@ void Entering::write_feeds(UuidMaker& uuids, std::int64_t now_us) {
     if (fate == Fate::unchanged) continue;
     const Uuid uuid = uuids.next(now_us / 1000);
     db_.run(
-        "INSERT INTO feed(uuid, ord, designator, reel, poss_from, cert_from, cert_to, poss_to, known_us) "
-        "VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?)",
+        "INSERT INTO feed(uuid, ord, designator, reel, poss_from, cert_from, cert_to, poss_to, known_us, entered) "
+        "VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
         Blob{bytes(uuid)}, order_id(row->order.text), row->designator.text, reel_id(row->reel.text), row->poss_from,
-        row->cert_from, row->cert_to, row->poss_to, now_us);
+        row->cert_from, row->cert_to, row->poss_to, now_us, entry(row->reel.region, "feeds"));
   }
 }
 
@@ -538,7 +572,7 @@ std::vector<EnteredFile> Entering::counts() const {
 
 Result<std::vector<EnteredFile>> enter_lists(Database& database, UuidMaker& uuids,
                                              const std::vector<std::shared_ptr<const SourceText>>& sources,
-                                             std::int64_t now_us, Faults& faults) {
+                                             std::int64_t now_us, Faults& faults, const EnteredBy& by) {
   using namespace std::chrono;
   const Week now = week_of(floor<days>(sys_time<microseconds>(microseconds(now_us))));
   const Lists lists = read_lists(sources, now, faults);
@@ -547,7 +581,7 @@ Result<std::vector<EnteredFile>> enter_lists(Database& database, UuidMaker& uuid
   entering.check();
   if (database.failed()) return database.error();
   if (faults.any()) return std::vector<EnteredFile>{};
-  entering.write(uuids, now_us);
+  entering.write(uuids, now_us, by);
   const auto done = transaction.commit();
   if (!done) return done.error();
   return entering.counts();

@@ -7,7 +7,7 @@ namespace {
 
 // Integer keys never leave the file; uuids, names and serials do. Records are only added. What changes in place is
 // derived from them: trial.counts, and the columns of a trial that its end fills in.
-constexpr const char* tables = R"sql(
+constexpr const char* layout_1 = R"sql(
 CREATE TABLE meta(key TEXT PRIMARY KEY, value ANY NOT NULL) STRICT, WITHOUT ROWID;
 
 -- Full text of every file that ever judged. A set-up is what many trials have in common when they begin.
@@ -162,6 +162,26 @@ CREATE VIEW boards AS
   LEFT JOIN trial t ON t.board = b.id AND t.counts = 1;
 )sql";
 
+// Every record in a chain a station and epoch: docs/store.md. Rows that lists brought name the record that brought
+// them.
+constexpr const char* layout_2 = R"sql(
+CREATE TABLE entered(
+  id INTEGER PRIMARY KEY, uuid BLOB NOT NULL UNIQUE, kind TEXT NOT NULL, name TEXT NOT NULL, who TEXT) STRICT;
+-- kind: 1 trial begun, 2 trial ended, 3 list entered. uuid: of the trial or of the row in `entered`.
+CREATE TABLE journal(
+  station INTEGER NOT NULL REFERENCES station, epoch INTEGER NOT NULL, seq INTEGER NOT NULL, kind INTEGER NOT NULL,
+  uuid BLOB NOT NULL, at_us INTEGER NOT NULL, body_sha256 BLOB NOT NULL, hash BLOB NOT NULL,
+  PRIMARY KEY(station, epoch, seq)) STRICT, WITHOUT ROWID;
+ALTER TABLE product_order ADD COLUMN entered INTEGER REFERENCES entered;
+ALTER TABLE build ADD COLUMN entered INTEGER REFERENCES entered;
+ALTER TABLE reel ADD COLUMN entered INTEGER REFERENCES entered;
+ALTER TABLE feed ADD COLUMN entered INTEGER REFERENCES entered;
+CREATE INDEX product_order_entered ON product_order(entered);
+CREATE INDEX build_entered ON build(entered);
+CREATE INDEX reel_entered ON reel(entered);
+CREATE INDEX feed_entered ON feed(entered);
+)sql";
+
 bool is_empty(Database& database) {
   return database.first("SELECT count(*) FROM sqlite_schema").value_or(1) == 0;
 }
@@ -170,20 +190,22 @@ Error refusal(const Database& database, std::string what, std::string to_do) {
   return {Error::Kind::store, std::move(what), database.path(), std::move(to_do)};
 }
 
+void mark_layout(Database& database) {
+  database.script(
+      fmt::format("PRAGMA application_id = {}; PRAGMA user_version = {}", application_id, layout_version).c_str());
+}
+
 Result<Done> make_schema(Database& database, std::string_view uuid) {
   database.script("PRAGMA journal_mode = WAL");
   if (database.failed()) return database.error();
   Transaction transaction(database, Transaction::Kind::write);
   if (!is_empty(database)) return transaction.commit();  // another process was first
-  database.script(tables);
-  database.script(views);
+  lay_out(database);
   database.run("INSERT INTO meta VALUES('store', ?)", Blob{uuid});
-  database.script(
-      fmt::format("PRAGMA application_id = {}; PRAGMA user_version = {}", application_id, layout_version).c_str());
   return transaction.commit();
 }
 
-Result<Done> check_schema(Database& database) {
+Result<std::int64_t> check_schema(Database& database) {
   const auto marked = database.first("PRAGMA application_id");
   const auto version = database.first("PRAGMA user_version");
   if (database.failed()) return database.error();
@@ -195,15 +217,27 @@ Result<Done> check_schema(Database& database) {
                    fmt::format("a newer program made this store (layout {}, this program knows layout {})", *version,
                                layout_version),
                    "use the newer program; nothing was changed");
-  if (*version < layout_version)
+  if (*version < 1)
     return refusal(database, fmt::format("this store has the unknown layout {}", *version),
                    "restore it from a backup; nothing was changed");
-  return Done{};
+  return *version;
 }
 
 }  // namespace
 
-Result<Done> settle_schema(Database& database, bool create, std::string_view uuid) {
+void lay_out(Database& database) {
+  database.script(layout_1);
+  database.script(views);
+  database.script(layout_2);
+  mark_layout(database);
+}
+
+void lay_out_2(Database& database) {
+  database.script(layout_2);
+  mark_layout(database);
+}
+
+Result<std::int64_t> settle_schema(Database& database, bool create, std::string_view uuid) {
   database.script("PRAGMA foreign_keys = ON; PRAGMA synchronous = FULL");
   const bool empty = is_empty(database);
   if (database.failed()) return database.error();

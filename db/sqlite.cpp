@@ -55,6 +55,20 @@ bool Query::next() {
   return false;
 }
 
+Query::Type Query::type(int column) const {
+  switch (sqlite3_column_type(statement_, column)) {
+    case SQLITE_INTEGER:
+      return Type::integer;
+    case SQLITE_FLOAT:
+      return Type::real;
+    case SQLITE_TEXT:
+      return Type::text;
+    case SQLITE_BLOB:
+      return Type::blob;
+    default:
+      return Type::null;
+  }
+}
 bool Query::null(int column) const {
   return sqlite3_column_type(statement_, column) == SQLITE_NULL;
 }
@@ -64,10 +78,14 @@ std::int64_t Query::integer(int column) const {
 double Query::real(int column) const {
   return null(column) ? std::numeric_limits<double>::quiet_NaN() : sqlite3_column_double(statement_, column);
 }
-std::string Query::text(int column) const {
+std::string_view Query::view(int column) const {
   const void* bytes = sqlite3_column_blob(statement_, column);
   const int length = sqlite3_column_bytes(statement_, column);
-  return bytes == nullptr ? std::string() : std::string(static_cast<const char*>(bytes), static_cast<size_t>(length));
+  return bytes == nullptr ? std::string_view()
+                          : std::string_view(static_cast<const char*>(bytes), static_cast<size_t>(length));
+}
+std::string Query::text(int column) const {
+  return std::string(view(column));
 }
 std::optional<double> Query::maybe_real(int column) const {
   return null(column) ? std::nullopt : std::optional(real(column));

@@ -44,10 +44,13 @@ class Query {
 
   /// Steps to the next row; false at the end or once the database has failed.
   bool next();
+  enum class Type { null, integer, real, text, blob };
+  Type type(int column) const;
   bool null(int column) const;
-  std::int64_t integer(int column) const;  ///< 0 for NULL
-  double real(int column) const;           ///< NaN for NULL
-  std::string text(int column) const;      ///< empty for NULL; also the bytes of a BLOB
+  std::int64_t integer(int column) const;   ///< 0 for NULL
+  double real(int column) const;            ///< NaN for NULL
+  std::string text(int column) const;       ///< empty for NULL; also the bytes of a BLOB
+  std::string_view view(int column) const;  ///< the same until the next step, not copied
   std::optional<double> maybe_real(int column) const;
   std::optional<std::int64_t> maybe_integer(int column) const;
 

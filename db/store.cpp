@@ -5,6 +5,7 @@
 #include <chrono>
 
 #include "db/free_space.hpp"
+#include "db/migrate.hpp"
 #include "db/schema.hpp"
 #include "db/trial_writer.hpp"
 
@@ -16,9 +17,9 @@ bool missing(const std::string& path) {
   return path != ":memory:" && ::stat(path.c_str(), &status) != 0;
 }
 
-std::int64_t unix_ms() {
+std::int64_t utc_us() {
   using namespace std::chrono;
-  return duration_cast<milliseconds>(system_clock::now().time_since_epoch()).count();
+  return duration_cast<microseconds>(system_clock::now().time_since_epoch()).count();
 }
 
 }  // namespace
@@ -33,15 +34,33 @@ Result<std::unique_ptr<Store>> Store::open(const std::string& path, const StoreO
   const bool create = write && options.create;
   if (!create && missing(path))
     return Error{Error::Kind::store, "there is no store here", path, "check the path, or try a board first"};
+  const std::int64_t now_us = utc_us();
   if (const auto writable = write ? check_writable(path) : Done{}; !writable) return writable.error();
   auto database =
       Database::open(path, write ? Database::Access::write : Database::Access::read, create, options.busy_ms);
   if (!database) return database.error();
   std::unique_ptr<Store> store(new Store(std::move(database.value())));
-  const Uuid uuid = store->uuids_.next(unix_ms());
-  const auto settled = settle_schema(*store->database_, create, bytes(uuid));
-  if (!settled) return settled.error();
+  const Uuid uuid = store->uuids_.next(now_us / 1000);
+  const auto layout = settle_schema(*store->database_, create, bytes(uuid));
+  if (!layout) return layout.error();
+  if (layout.value() == layout_version) return store;
+  if (!write) return reopened(path, options);
+  const auto notice = migrate(*store->database_, store->uuids_, now_us);
+  if (!notice) return notice.error();
+  store->notice_ = notice.value();
   return store;
+}
+
+/// For reading, once a writer has brought the layout up to date.
+Result<std::unique_ptr<Store>> Store::reopened(const std::string& path, StoreOptions options) {
+  StoreOptions writing = options;
+  writing.access = StoreOptions::Access::write;
+  writing.create = false;
+  const auto writer = open(path, writing);
+  if (!writer) return writer.error();
+  auto reader = open(path, options);
+  if (reader) reader.value()->notice_ = writer.value()->notice_;
+  return reader;
 }
 
 Result<OpenTrial> Store::begin_trial(const TrialStart& start) {
@@ -54,8 +73,8 @@ Result<Done> Store::finish_trial(const OpenTrial& open, const TrialEnd& end) {
 }
 
 Result<std::vector<EnteredFile>> Store::enter(const std::vector<std::shared_ptr<const SourceText>>& sources,
-                                              std::int64_t now_us, Faults& faults) {
-  return enter_lists(*database_, uuids_, sources, now_us, faults);
+                                              std::int64_t now_us, Faults& faults, const EnteredBy& by) {
+  return enter_lists(*database_, uuids_, sources, now_us, faults, by);
 }
 
 Result<SerialTrace> Store::trace_serial(const std::string& serial) {

@@ -22,18 +22,22 @@ struct StoreOptions {
 
 class Store final : public TrialLog {
  public:
-  /// Error kind store: missing, not a store, of a newer program, not permitted; the file is then unchanged.
+  /// Error kind store: missing, not a store, of a newer program, not permitted; the file is then unchanged. A store of
+  /// an older layout is brought up to date first, whatever the access, and notice() says so.
   static Result<std::unique_ptr<Store>> open(const std::string& path, const StoreOptions& options = {});
   ~Store() override;
   Store(const Store&) = delete;
   Store& operator=(const Store&) = delete;
+
+  /// What opening did that a person should know; empty = nothing.
+  const std::string& notice() const { return notice_; }
 
   Result<OpenTrial> begin_trial(const TrialStart& start) override;
   Result<Done> finish_trial(const OpenTrial& open, const TrialEnd& end) override;
 
   /// Takes lists of boards, reels and feeds in, all files or none: see enter.hpp.
   Result<std::vector<EnteredFile>> enter(const std::vector<std::shared_ptr<const SourceText>>& sources,
-                                         std::int64_t now_us, Faults& faults);
+                                         std::int64_t now_us, Faults& faults, const EnteredBy& by = {});
 
   /// Questions: see questions.hpp.
   Result<SerialTrace> trace_serial(const std::string& serial);
@@ -46,7 +50,9 @@ class Store final : public TrialLog {
 
  private:
   explicit Store(std::unique_ptr<Database> database);
+  static Result<std::unique_ptr<Store>> reopened(const std::string& path, StoreOptions options);
 
+  std::string notice_;
   UuidMaker uuids_;
   std::unique_ptr<Database> database_;
   std::unique_ptr<TrialWriter> writer_;

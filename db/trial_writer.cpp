@@ -3,6 +3,7 @@
 #include <algorithm>
 
 #include "db/digest.hpp"
+#include "db/journal.hpp"
 #include "db/speaks.hpp"
 
 namespace jigwright {
@@ -34,6 +35,7 @@ Result<OpenTrial> TrialWriter::begin(const TrialStart& start) {
   open.uuid = uuids_.next(start.at_us / 1000);
   settle_setup(start);
   insert_open(start, open);
+  journal_begun(open, start.at_us);
   const auto done = transaction.commit();
   if (done) return open;
   forget();
@@ -50,13 +52,6 @@ void TrialWriter::check_origin(const TrialStart& start) {
             std::string("this store holds ") + origin_word(*held) + " trials, and this trial is " +
                 origin_word(origin) + ": the two don't share a store",
             db_.path(), "name another store for it"});
-}
-
-TrialWriter::Id TrialWriter::station(const TrialStart& start) {
-  if (const auto id = db_.first("SELECT id FROM station WHERE name = ?", start.station)) return *id;
-  const Uuid uuid = uuids_.next(start.at_us / 1000);
-  db_.run("INSERT INTO station(uuid, name) VALUES(?, ?)", Blob{bytes(uuid)}, start.station);
-  return db_.last_id();
 }
 
 TrialWriter::Id TrialWriter::board(const std::string& serial) {
@@ -123,7 +118,7 @@ TrialWriter::Id TrialWriter::revision(const TrialStart& start, std::optional<Id>
 
 void TrialWriter::insert_open(const TrialStart& start, OpenTrial& open) {
   const Id on = board(start.serial);
-  const Id at = station(start);
+  const Id at = station_row(db_, uuids_, start.station, start.at_us);
   std::optional<Id> ord, who;
   if (!start.order.empty()) ord = order(start.order);
   if (!start.operator_name.empty()) who = person(start.operator_name);
@@ -154,6 +149,7 @@ Result<Done> TrialWriter::finish(const OpenTrial& open, const TrialEnd& end) {
   insert_findings(open, end.findings, metrics);
   db_.run("INSERT INTO reading_blob VALUES(?, ?, ?)", open.id, end.readings_format, Blob{end.readings});
   settle_counts(db_.first("SELECT board FROM trial WHERE id = ?", open.id).value_or(0));
+  journal_ended(open, end.took_ms);
   const auto done = transaction.commit();
   if (!done) forget();
   return done;
@@ -299,7 +295,21 @@ void TrialWriter::settle_counts(Id board) {
   db_.run("UPDATE trial SET counts = 1 WHERE id = ?", ids[*speaks]);
 }
 
+void TrialWriter::journal_begun(const OpenTrial& open, std::int64_t at_us) {
+  if (const auto body = bodies_.begun(bytes(open.uuid)); body && !db_.failed())
+    append_record(db_, body->station, RecordKind::trial_begun, bytes(open.uuid), at_us, body->sha256);
+}
+
+/// Stamped by the trial's own time: its begin and what it took.
+void TrialWriter::journal_ended(const OpenTrial& open, std::int64_t took_ms) {
+  const auto body = bodies_.ended(bytes(open.uuid));
+  if (!body || db_.failed()) return;
+  const auto began_us = db_.first("SELECT at_us FROM trial WHERE id = ?", open.id).value_or(0);
+  append_record(db_, body->station, RecordKind::trial_ended, bytes(open.uuid), began_us + took_ms * 1000, body->sha256);
+}
+
 void TrialWriter::forget() {
+  bodies_.forget();
   setup_.reset();
   metrics_.clear();
   applied_.clear();

@@ -6,6 +6,7 @@
 #include <tuple>
 #include <unordered_map>
 
+#include "db/bodies.hpp"
 #include "db/sqlite.hpp"
 #include "db/trial_log.hpp"
 
@@ -13,7 +14,7 @@ namespace jigwright {
 
 class TrialWriter {
  public:
-  TrialWriter(Database& database, UuidMaker& uuids) : db_(database), uuids_(uuids) {}
+  TrialWriter(Database& database, UuidMaker& uuids) : db_(database), uuids_(uuids), bodies_(database) {}
 
   Result<OpenTrial> begin(const TrialStart& start);
   Result<Done> finish(const OpenTrial& open, const TrialEnd& end);
@@ -32,7 +33,6 @@ class TrialWriter {
     std::optional<double> worst_margin;
   };
   void check_origin(const TrialStart& start);
-  Id station(const TrialStart& start);
   Id board(const std::string& serial);
   Id order(const std::string& name);
   Id person(const std::string& name);
@@ -50,10 +50,13 @@ class TrialWriter {
   void insert_applied_limit(Id applied, Id metric, const Limit& limit);
   void close(const OpenTrial& open, const TrialEnd& end, const Tally& tally, Id applied);
   void settle_counts(Id board);
+  void journal_begun(const OpenTrial& open, std::int64_t at_us);
+  void journal_ended(const OpenTrial& open, std::int64_t took_ms);
   void forget();
 
   Database& db_;
   UuidMaker& uuids_;
+  Bodies bodies_;
   std::optional<Setup> setup_;  ///< of the last trial begun
   std::map<std::tuple<std::string, std::string, std::string, int, int>, Id> metrics_;
   std::unordered_map<std::string, Id> applied_, equipment_, reduction_;  ///< by digest

@@ -1,10 +1,13 @@
-// `enter`, `trace`, `show` and `faults`: lists in, answers out.
+// `enter`, `trace`, `show`, `audit`, `log` and `faults`: lists in, answers out.
 #include <fmt/format.h>
+
+#include <limits>
 
 #include "db/enter.hpp"
 #include "db/questions.hpp"
 #include "db/store.hpp"
 #include "fixtures/simulated/simulated_bench.hpp"
+#include "station/audit_text.hpp"
 #include "station/commands.hpp"
 #include "station/exit_codes.hpp"
 #include "station/fail.hpp"
@@ -16,7 +19,9 @@ namespace {
 Result<std::unique_ptr<Store>> for_reading(const std::string& path) {
   StoreOptions options;
   options.access = StoreOptions::Access::read;
-  return Store::open(path, options);
+  auto store = Store::open(path, options);
+  if (store) tell(store.value()->notice());
+  return store;
 }
 
 Form form(bool csv, bool json) {
@@ -41,8 +46,9 @@ int enter(const EnterOptions& options) {
   }
   auto store = Store::open(options.store);
   if (!store) return fail(store.error());
+  tell(store.value()->notice());
   Faults faults;
-  const auto entered = enter_lists(store.value()->database(), store.value()->uuids(), sources, utc_us(), faults);
+  const auto entered = store.value()->enter(sources, utc_us(), faults, {options.station_name, options.operator_name});
   if (!entered) return fail(entered.error());
   fmt::print(stderr, "{}", render(faults));
   if (faults.any()) {
@@ -69,6 +75,27 @@ int show(const ShowOptions& options) {
   auto store = for_reading(options.store);
   if (!store) return fail(store.error());
   return print_answer(show_board(store.value()->database(), options.serial), form(options.csv, options.json));
+}
+
+int audit(const AuditOptions& options) {
+  auto store = for_reading(options.store);
+  if (!store) return fail(store.error());
+  const auto report = audit(store.value()->database());
+  if (!report.ok()) return fail(report.error());
+  fmt::print("{}", render(report.value(), options.store, options.json));
+  return report.value().whole() ? exit_go : exit_store;
+}
+
+int log(const LogOptions& options) {
+  auto store = for_reading(options.store);
+  if (!store) return fail(store.error());
+  const std::int64_t most = options.last > 0         ? options.last
+                            : options.serial.empty() ? 40
+                                                     : std::numeric_limits<std::int64_t>::max();
+  const auto lines = read_log(store.value()->database(), options.serial, most);
+  if (!lines.ok()) return fail(lines.error());
+  fmt::print("{}", render(lines.value(), options.json));
+  return exit_go;
 }
 
 int list_faults() {

@@ -37,7 +37,7 @@ int list_faults();
 
 struct EnterOptions {
   std::vector<std::string> files;
-  std::string store;
+  std::string store, station_name, operator_name;
 };
 int enter(const EnterOptions& options);
 
@@ -52,5 +52,19 @@ struct ShowOptions {
   bool csv{false}, json{false};
 };
 int show(const ShowOptions& options);
+
+struct AuditOptions {
+  std::string store;
+  bool json{false};
+};
+/// exit_store when something is not as recorded.
+int audit(const AuditOptions& options);
+
+struct LogOptions {
+  std::string serial, store;
+  std::int64_t last{0};  ///< 0 = 40, or all of a serial
+  bool json{false};
+};
+int log(const LogOptions& options);
 
 }  // namespace jigwright

@@ -25,6 +25,10 @@ int fail(const Error& error) {
   }
 }
 
+void tell(const std::string& notice) {
+  if (!notice.empty()) fmt::print(stderr, "jigwright: {}\n", printable(notice));
+}
+
 std::int64_t utc_us() {
   using namespace std::chrono;
   return duration_cast<microseconds>(system_clock::now().time_since_epoch()).count();

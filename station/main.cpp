@@ -84,6 +84,7 @@ int main(int argc, char** argv) {
   EnterOptions entering;
   auto* enter_command = app.add_subcommand("enter", "Take in orders, boards, reels and feeds from CSV files");
   enter_command->add_option("FILE", entering.files, "CSV files; the header tells what each holds")->required();
+  enter_command->add_option("--operator", entering.operator_name, "who enters, for the record");
 
   TraceOptions tracing;
   auto* trace_command = app.add_subcommand("trace", "Which reels a serial carries, or which serials carry a reel");
@@ -98,6 +99,16 @@ int main(int argc, char** argv) {
   show_command->add_option("SERIAL", showing.serial, "the board's serial")->required();
   show_command->add_flag("--csv", showing.csv, "as CSV");
   show_command->add_flag("--json", showing.json, "as JSON");
+
+  AuditOptions auditing;
+  auto* audit_command = app.add_subcommand("audit", "Check that the store holds what was recorded, unchanged");
+  audit_command->add_flag("--json", auditing.json, "as JSON");
+
+  LogOptions logging;
+  auto* log_command = app.add_subcommand("log", "Who did what when, newest last");
+  log_command->add_option("--serial", logging.serial, "only of this board");
+  log_command->add_option("--last", logging.last, "so many (default: 40; of a board, all)")->check(CLI::PositiveNumber);
+  log_command->add_flag("--json", logging.json, "as JSON");
 
   try {
     app.parse(argc, argv);
@@ -135,8 +146,11 @@ int main(int argc, char** argv) {
     trying.program = "jigwright " JIGWRIGHT_VERSION;
     return try_boards(trying);
   }
-  entering.store = tracing.store = showing.store = store;
+  entering.store = tracing.store = showing.store = auditing.store = logging.store = store;
+  entering.station_name = station->name;
   if (*enter_command) return enter(entering);
+  if (*audit_command) return audit(auditing);
+  if (*log_command) return log(logging);
   if (*trace_command) return trace(tracing);
   return show(showing);
 }

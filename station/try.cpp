@@ -157,6 +157,7 @@ int try_boards(const TryOptions& options) {
   if (const auto words = check_fault_words(*plan->jig, options.faults); !words.ok()) return fail(words.error());
   auto store = Store::open(options.store);
   if (!store.ok()) return fail(store.error());
+  tell(store.value()->notice());
   auto serials = boards(options, *store.value(), *scenario);
   if (!serials.ok()) return fail(serials.error());
   Run run(options, plan, scenario, *store.value());

@@ -6,22 +6,19 @@
 
 using namespace jigwright;
 
-namespace {
-std::string hex(const std::string& bytes) {
-  static constexpr char digits[] = "0123456789abcdef";
-  std::string out;
-  for (char c : bytes) {
-    out += digits[static_cast<unsigned char>(c) >> 4];
-    out += digits[static_cast<unsigned char>(c) & 15];
-  }
-  return out;
-}
-}  // namespace
-
 TEST_CASE("SHA-256 of the examples published with FIPS 180-4") {
   CHECK(hex(sha256("abc")) == "ba7816bf8f01cfea414140de5dae2223b00361a396177a9cb410ff61f20015ad");
   CHECK(hex(sha256("abcdbcdecdefdefgefghfghighijhijkijkljklmklmnlmnomnopnopq")) ==
         "248d6a61d20638b8e5c026930c3e6039a33ce45964ff2167f6ecedd419db06c1");
+}
+
+TEST_CASE("SHA-256 of nothing and of a million letters, whole and in pieces (FIPS 180-2 appendix B.3)") {
+  const std::string million = "cdc76e5c9914fb9281a1c7e284d73e67f1809a48a497200e046d39ccc7112cd0";
+  CHECK(hex(sha256("")) == "e3b0c44298fc1c149afbf4c8996fb92427ae41e4649b934ca495991b7852b855");
+  CHECK(hex(sha256(std::string(1'000'000, 'a'))) == million);
+  Sha256 pieces;
+  for (int i = 0; i < 1000; ++i) pieces.add(std::string(1000, 'a'));
+  CHECK(hex(pieces.digest()) == million);
 }
 
 TEST_CASE("fields that join to the same text differ in canonical form") {

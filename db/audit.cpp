@@ -1,0 +1,313 @@
+#include "db/audit.hpp"
+
+#include <fmt/format.h>
+
+#include <map>
+#include <set>
+#include <unordered_map>
+#include <utility>
+
+#include "db/bodies.hpp"
+#include "db/digest.hpp"
+#include "db/journal.hpp"
+#include "db/schema.hpp"
+#include "db/speaks.hpp"
+#include "db/sqlite.hpp"
+
+namespace jigwright {
+namespace {
+
+using Id = std::int64_t;
+
+class Audit {
+ public:
+  explicit Audit(Database& database) : db_(database), bodies_(database) {}
+  AuditReport run();
+
+ private:
+  struct Seen {
+    bool ended{false};
+  };
+  struct Link {
+    std::string station, uuid;  ///< of the station
+    JournalRow row;
+    std::string hash;
+  };
+  void differs(std::string what) { add({std::move(what), {}, {}, {}, 0, 0}); }
+  void differs(std::string what, const Link& at, std::string on);
+  void add(Difference difference);
+
+  void check_file();
+  void check_schema();
+  void check_documents();
+  void check_chains();
+  void check_chain(Id station, const std::string& name, const std::string& uuid);
+  void check_link(const Link& link, const Link* before, Id station);
+  void check_begun(const Link& link, Id station);
+  void check_ended(const Link& link, Id station);
+  void check_entered(const Link& link);
+  void check_trials();
+  void check_board(const std::string& serial, const std::vector<PastTrial>& trials, const std::vector<Id>& counts);
+  void check_counts();
+  void count(Sql held, std::int64_t recorded, const char* what);
+  void none(Sql first, const char* what);
+  void check_meta();
+
+  Database& db_;
+  Bodies bodies_;
+  AuditReport report_;
+  std::unordered_map<Id, Seen> trials_;
+  std::map<std::string, Id> entry_ids_;
+  std::map<Id, Bodies::Entry> entries_;
+  std::set<Id> entries_seen_;
+  bool unreadable_{false};
+  std::int64_t readings_{0}, orders_{0}, builds_{0}, reels_{0}, feeds_{0};
+};
+
+std::string record_word(std::int64_t kind) {
+  switch (static_cast<RecordKind>(kind)) {
+    case RecordKind::trial_begun:
+      return "trial begun";
+    case RecordKind::trial_ended:
+      return "trial ended";
+    case RecordKind::list_entered:
+      return "list entered";
+  }
+  return "record of an unknown kind";
+}
+
+/// Once the store can't be read any further, what is missing is no news.
+void Audit::add(Difference difference) {
+  if (db_.failed() && unreadable_) return;
+  unreadable_ = db_.failed();
+  if (unreadable_) difference = {"the store could not be read to its end: " + db_.error().what, {}, {}, {}, 0, 0};
+  ++report_.found;
+  if (report_.differences.size() < AuditReport::most_listed) report_.differences.push_back(std::move(difference));
+}
+
+void Audit::differs(std::string what, const Link& at, std::string on) {
+  add({std::move(what), record_word(at.row.kind), std::move(on), at.station, at.row.epoch, at.row.seq});
+}
+
+AuditReport Audit::run() {
+  check_file();
+  check_schema();
+  check_documents();
+  check_chains();
+  check_trials();
+  check_counts();
+  check_meta();
+  if (db_.failed()) differs({});
+  return std::move(report_);
+}
+
+void Audit::check_file() {
+  Query q = db_.query("PRAGMA integrity_check(20)");
+  while (q.next())
+    if (q.text(0) != "ok") differs("SQLite's integrity check: " + q.text(0));
+}
+
+using SchemaText = std::map<std::string, std::string>;
+
+SchemaText schema_of(Database& database) {
+  SchemaText out;
+  Query q = database.query("SELECT type || ' ' || name || ' on ' || tbl_name, sql FROM sqlite_schema");
+  while (q.next()) out[q.text(0)] += q.text(1);
+  return out;
+}
+
+void Audit::check_schema() {
+  const auto fresh = Database::open(":memory:", Database::Access::write, true, 0);
+  if (!fresh) return differs("no memory for the schema to compare with");
+  lay_out(*fresh.value());
+  const SchemaText expected = schema_of(*fresh.value()), held = schema_of(db_);
+  for (const auto& [name, text] : expected) {
+    const auto found = held.find(name);
+    if (found == held.end()) differs("the schema lacks the " + name);
+    if (found != held.end() && found->second != text) differs("the schema's text differs for the " + name);
+  }
+  for (const auto& [name, text] : held)
+    if (!expected.contains(name)) differs("the schema has a foreign " + name);
+}
+
+void Audit::check_documents() {
+  Query q = db_.query("SELECT sha256, kind, name, body FROM document");
+  while (q.next())
+    if (sha256(q.view(3)) != q.view(0))
+      differs(fmt::format("the text of {} \"{}\" is not what its hash says", q.text(1), q.text(2)));
+}
+
+void Audit::check_chains() {
+  entries_ = bodies_.entered(0);
+  {
+    Query q = db_.query("SELECT id, uuid FROM entered");
+    while (q.next()) entry_ids_[q.text(1)] = q.integer(0);
+  }
+  Query q = db_.query("SELECT id, name, uuid FROM station ORDER BY id");
+  while (q.next()) check_chain(q.integer(0), q.text(1), q.text(2));
+}
+
+void Audit::check_chain(Id station, const std::string& name, const std::string& uuid) {
+  Link link{name, uuid, {}, {}}, before;
+  bool first = true;
+  Query q = db_.query(
+      "SELECT epoch, seq, kind, uuid, at_us, body_sha256, hash FROM journal WHERE station = ? ORDER BY epoch, seq",
+      station);
+  while (q.next()) {
+    link.row = {q.integer(0), q.integer(1), q.integer(2), q.text(3), q.integer(4), q.text(5)};
+    link.hash = q.text(6);
+    check_link(link, first ? nullptr : &before, station);
+    before = link;
+    first = false;
+    ++report_.records;
+  }
+  if (first) return differs(fmt::format("station {} has no record", name));
+  report_.heads.push_back({name, before.row.epoch, before.row.seq, before.row.at_us, before.hash});
+}
+
+void Audit::check_link(const Link& link, const Link* before, Id station) {
+  const bool begins = before == nullptr || before->row.epoch != link.row.epoch;
+  const std::int64_t due = begins ? 1 : before->row.seq + 1;
+  if (link.row.seq != due) differs(fmt::format("record {} is missing before it", due), link, {});
+  const std::string start = chain_start();
+  if (record_hash(begins ? start : before->hash, link.uuid, link.row) != link.hash)
+    differs("its hash does not follow from the record and the hash before it", link, {});
+  if (before != nullptr && link.row.at_us < before->row.at_us - 1'000'000) ++report_.steps_back;
+  switch (static_cast<RecordKind>(link.row.kind)) {
+    case RecordKind::trial_begun:
+      return check_begun(link, station);
+    case RecordKind::trial_ended:
+      return check_ended(link, station);
+    case RecordKind::list_entered:
+      return check_entered(link);
+  }
+  differs("this program knows no such record", link, {});
+}
+
+void Audit::check_begun(const Link& link, Id station) {
+  const auto body = bodies_.begun(link.row.uuid);
+  if (!body) return differs("its trial is not in the store", link, {});
+  ++report_.trials;
+  if (!trials_.try_emplace(body->id).second) differs("the trial was begun before", link, body->serial);
+  if (body->sha256 != link.row.body_sha256 || body->station != station)
+    differs("the rows are not what was recorded", link, body->serial);
+  if (body->open && !body->pristine) differs("the trial's row has an end that was not recorded", link, body->serial);
+}
+
+void Audit::check_ended(const Link& link, Id station) {
+  const auto body = bodies_.ended(link.row.uuid, true);
+  if (!body) return differs("its trial is not in the store", link, {});
+  report_.findings += body->findings;
+  readings_ += body->readings;
+  const auto seen = trials_.find(body->id);
+  if (seen == trials_.end()) differs("the trial was not begun before", link, body->serial);
+  if (seen != trials_.end() && std::exchange(seen->second.ended, true))
+    differs("the trial was ended before", link, body->serial);
+  if (body->sha256 != link.row.body_sha256 || body->station != station)
+    differs("the rows are not what was recorded", link, body->serial);
+  if (!body->misfit.empty()) differs(body->misfit, link, body->serial);
+}
+
+void Audit::check_entered(const Link& link) {
+  ++report_.lists;
+  const auto id = entry_ids_.find(link.row.uuid);
+  if (id == entry_ids_.end()) return differs("what it brought is not in the store", link, {});
+  std::string name;
+  if (Query q = db_.query("SELECT name FROM entered WHERE id = ?", id->second); q.next()) name = q.text(0);
+  if (!entries_seen_.insert(id->second).second) return differs("the list was entered before", link, name);
+  const Bodies::Entry& entry = entries_[id->second];
+  if (entry.sha256 != link.row.body_sha256) differs("the rows are not what was recorded", link, name);
+  orders_ += entry.orders;
+  builds_ += entry.builds;
+  reels_ += entry.reels;
+  feeds_ += entry.feeds;
+}
+
+/// Every trial has its records, and the one that speaks for a board is the one that does.
+void Audit::check_trials() {
+  std::string serial;
+  Id board = 0;
+  std::vector<PastTrial> trials;
+  std::vector<Id> counts;
+  Query q = db_.query(
+      "SELECT t.board, b.serial, t.id, t.state, t.judgement, t.counts, t.attempt FROM trial t INDEXED BY trial_board "
+      "LEFT JOIN board b ON b.id = t.board ORDER BY t.board, t.id");
+  while (q.next()) {
+    if (q.integer(0) != board) {
+      check_board(serial, trials, counts);
+      board = q.integer(0);
+      serial = q.text(1);
+      trials.clear();
+      counts.clear();
+    }
+    trials.push_back({static_cast<Judgement>(q.integer(4)), false});
+    counts.push_back(q.integer(5));
+    const auto seen = trials_.find(q.integer(2));
+    if (seen == trials_.end()) {
+      differs(fmt::format("a trial of board {} has no record", serial));
+    } else if (q.integer(3) != 0 && !seen->second.ended) {
+      differs(fmt::format("a trial of board {} has ended, and no record says so", serial));
+    }
+    if (q.integer(6) != static_cast<Id>(trials.size()))
+      differs(fmt::format("trial {} of board {} stands as its attempt {}", trials.size(), serial, q.integer(6)));
+  }
+  check_board(serial, trials, counts);
+}
+
+void Audit::check_board(const std::string& serial, const std::vector<PastTrial>& trials,
+                        const std::vector<Id>& counts) {
+  const auto speaks = speaking_trial(trials);
+  for (std::size_t i = 0; i < trials.size(); ++i)
+    if (counts[i] != (speaks == i ? 1 : 0))
+      return differs(fmt::format("board {}: the trial that speaks for it is marked wrongly", serial));
+}
+
+void Audit::count(Sql held, std::int64_t recorded, const char* what) {
+  const auto rows = db_.first(held);
+  if (rows && *rows != recorded) differs(fmt::format("{} {} in the store, {} recorded", *rows, what, recorded));
+}
+
+/// @param first  the name of a row that should not be
+void Audit::none(Sql first, const char* what) {
+  Query q = db_.query(first);
+  if (q.next()) differs(fmt::format("{}: \"{}\"", what, q.text(0)));
+}
+
+void Audit::check_counts() {
+  if (db_.failed()) return;
+  count("SELECT count(*) FROM finding", report_.findings, "findings");
+  count("SELECT count(*) FROM reading_blob", readings_, "trials' readings");
+  count("SELECT count(*) FROM journal", report_.records, "records");
+  count("SELECT count(*) FROM entered", report_.lists, "lists");
+  count("SELECT count(*) FROM product_order WHERE product IS NOT NULL OR entered IS NOT NULL", orders_, "products");
+  count("SELECT count(*) FROM build", builds_, "build places");
+  count("SELECT count(*) FROM reel", reels_, "reels");
+  count("SELECT count(*) FROM feed", feeds_, "feeds");
+  none("SELECT designator FROM feed WHERE dropped_us IS NOT NULL", "a feed is dropped, and no record says so");
+  none(
+      "SELECT serial FROM board b WHERE NOT EXISTS(SELECT 1 FROM build WHERE board = b.id) AND "
+      "NOT EXISTS(SELECT 1 FROM trial WHERE board = b.id)",
+      "a board that no record names");
+  none(
+      "SELECT name FROM product_order WHERE id NOT IN (SELECT ord FROM build UNION SELECT ord FROM feed UNION "
+      "SELECT ord FROM trial WHERE ord IS NOT NULL)",
+      "an order that no record names");
+  none("SELECT maker FROM lot WHERE id NOT IN (SELECT lot FROM reel)", "a lot that no record names, by its maker");
+}
+
+void Audit::check_meta() {
+  if (db_.failed()) return;
+  none("SELECT key FROM meta WHERE key NOT IN ('store', 'origin')", "a foreign key in meta");
+  none("SELECT uuid FROM trial WHERE origin <> 2 AND origin IS NOT (SELECT value FROM meta WHERE key = 'origin')",
+       "a trial of another origin than the store's");
+}
+
+}  // namespace
+
+Result<AuditReport> audit(Database& database) {
+  Transaction reading(database, Transaction::Kind::read);
+  if (!database.first("SELECT count(*) FROM sqlite_schema") && database.failed()) return database.error();
+  return Audit(database).run();
+}
+
+}  // namespace jigwright

@@ -1,0 +1,336 @@
+#include "db/audit.hpp"
+
+#include <sqlite3.h>
+
+#include <fstream>
+#include <random>
+
+#include "db/sqlite.hpp"
+#include "tests/db/room.hpp"
+
+using namespace jigwright;
+using room::must;
+
+namespace {
+
+std::shared_ptr<const SourceText> csv(const std::string& name, const std::string& text) {
+  auto out = std::make_shared<SourceText>();
+  out->name = name;
+  out->text = text;
+  return out;
+}
+
+/// Something in every table and nearly every column.
+void fill(const std::string& path) {
+  const auto store = room::open(path);
+  Faults faults;
+  must(store->enter(
+      {csv("boards.csv",
+           "order,build_no,serial,panel,product\nWO-1,1,TB-01,P-1,amp\nWO-1,2,TB-02,P-1,amp\nWO-1,3,TB-03,P-2,amp\n"),
+       csv("reels.csv",
+           "reel,maker,part,lot,date_code,distributor,marking,rereeled,quantity\n"
+           "R-1,Alder,OA,L1,2531,Delta,K1,no,100\nR-2,Birch,OA,L2,,,,yes,\n"),
+       csv("feeds.csv",
+           "order,designator,reel,from,to,possible_from,possible_to\nWO-1,U7,R-1,1,1,1,2\nWO-1,U7,R-2,3,3,2,3\n")},
+      room::noon_us, faults));
+  REQUIRE(!faults.any());
+  room::try_board(*store, "TB-01", Judgement::no_go);
+  room::try_board(*store, "TB-01", Judgement::go);
+  room::try_board(*store, "TB-02", Judgement::void_);
+  room::try_board(*store, "TB-99", Judgement::go);  // in no list
+  must(store->begin_trial(room::start("TB-03")));   // killed
+}
+
+struct Closing {
+  void operator()(sqlite3* handle) const { sqlite3_close(handle); }
+};
+
+std::unique_ptr<sqlite3, Closing> plain(const std::string& path) {
+  sqlite3* handle = nullptr;
+  REQUIRE(sqlite3_open(path.c_str(), &handle) == SQLITE_OK);
+  return std::unique_ptr<sqlite3, Closing>(handle);
+}
+
+/// Every row of a statement as text; an error as its message.
+std::string rows(sqlite3* handle, const std::string& sql) {
+  sqlite3_stmt* statement = nullptr;
+  if (sqlite3_prepare_v2(handle, sql.c_str(), -1, &statement, nullptr) != SQLITE_OK) return sqlite3_errmsg(handle);
+  std::string out;
+  int code = 0;
+  while ((code = sqlite3_step(statement)) == SQLITE_ROW)
+    for (int i = 0; i < sqlite3_column_count(statement); ++i) {
+      const void* bytes = sqlite3_column_blob(statement, i);
+      const auto length = static_cast<std::size_t>(sqlite3_column_bytes(statement, i));
+      out += std::to_string(sqlite3_column_type(statement, i)) + ':';
+      if (bytes != nullptr) out.append(static_cast<const char*>(bytes), length);
+      out += '\n';
+    }
+  if (code != SQLITE_DONE) out += sqlite3_errmsg(handle);
+  sqlite3_finalize(statement);
+  return out;
+}
+
+void add(std::string& out, const BoardShown& shown) {
+  for (const ShownTrial& t : shown.trials) {
+    out += text(t.uuid) + std::to_string(t.attempt) + std::to_string(t.counts) + std::to_string(t.open) +
+           std::to_string(static_cast<int>(t.origin)) + std::to_string(t.at_us) + ' ' +
+           std::to_string(t.took_ms.value_or(-1)) + t.operator_name + t.station + t.program + t.plan + t.limit_set +
+           t.depth + std::to_string(t.nest) + ' ' + std::to_string(t.limit_revision) +
+           std::to_string(static_cast<int>(t.judgement)) + t.void_reason + t.unsafe + t.deciding.value_or("none") +
+           std::to_string(t.ambient_C.value_or(-1)) + ' ' + std::to_string(t.missed) + '\n';
+    for (const ShownFinding& f : t.findings) {
+      out +=
+          label(f.metric.name) + std::string(symbol(f.metric.unit)) + std::to_string(static_cast<int>(f.metric.about));
+      const Finding& x = f.judged.finding;
+      for (double v : {x.value, x.u, f.judged.margin}) out.append(reinterpret_cast<const char*>(&v), sizeof v);
+      out += std::to_string(x.n) + std::to_string(static_cast<int>(x.state)) +
+             std::to_string(static_cast<int>(f.judged.verdict));
+      if (!f.limit) continue;
+      const Limit& l = *f.limit;
+      for (double v : {l.specification.low.value_or(9), l.specification.high.value_or(9), l.nominal, l.share,
+                       l.budget_U, l.budget_of_reading, l.width, l.applied.low.value_or(9), l.applied.high.value_or(9)})
+        out.append(reinterpret_cast<const char*>(&v), sizeof v);
+      out += std::to_string(static_cast<int>(l.guard)) + l.reason + '\n';
+    }
+  }
+}
+
+/// What every question and every view says: trials, findings, limits; carriers; the files' text and readings too.
+std::string answers(const std::string& path) {
+  std::string out;
+  {
+    const auto handle = plain(path);
+    for (const char* view : {"boards", "results", "results_by_reel", "carries"})
+      out += rows(handle.get(), std::string("SELECT * FROM ") + view + " ORDER BY 1, 2, 3, 4, 5, 6, 7, 8");
+    out += rows(handle.get(),
+                "SELECT r.name, l.maker, l.part, l.lot, r.date_code, r.distributor, r.rereeled, r.quantity, r.marking "
+                "FROM reel r JOIN lot l ON l.id = r.lot ORDER BY 1");
+    out += rows(handle.get(),
+                "SELECT t.uuid, d.kind, d.body FROM trial t JOIN setup_document s ON s.setup = t.setup JOIN document d "
+                "ON d.id = s.document ORDER BY 1, 2");
+    out += rows(handle.get(),
+                "SELECT t.uuid, b.format, b.body FROM trial t JOIN reading_blob b ON b.trial = t.id ORDER BY 1");
+    out += rows(
+        handle.get(),
+        "SELECT t.uuid, i.instrument, i.maker, i.model, i.serial, i.firmware FROM trial t JOIN equipment_instrument "
+        "e ON e.equipment = t.equipment JOIN instrument i ON i.id = e.instrument ORDER BY 1, 2, 3, 4");
+    out += rows(handle.get(),
+                "SELECT t.uuid, s.kind, s.version FROM trial t JOIN reduction_step s ON s.reduction = t.reduction "
+                "ORDER BY 1, 2");
+  }
+  StoreOptions reading;
+  reading.access = StoreOptions::Access::read;
+  auto store = Store::open(path, reading);
+  if (!store) return out + describe(store.error());
+  for (const char* serial : {"TB-01", "TB-02", "TB-03", "TB-99"}) {
+    const auto shown = store.value()->show(serial);
+    shown.ok() ? add(out, shown.value()) : void(out += describe(shown.error()));
+  }
+  return out;
+}
+
+/// The audit's verdict: true = whole. A store that can't be opened is told of as well.
+bool passes(const std::string& path) {
+  StoreOptions reading;
+  reading.access = StoreOptions::Access::read;
+  auto store = Store::open(path, reading);
+  if (!store) return false;
+  const auto report = audit(store.value()->database());
+  return report.ok() && report.value().whole();
+}
+
+std::string bytes_of(const std::string& path) {
+  std::ifstream in(path, std::ios::binary);
+  return {std::istreambuf_iterator<char>(in), {}};
+}
+void put(const std::string& path, const std::string& bytes) {
+  for (const char* beside : {"-wal", "-shm"}) std::filesystem::remove(path + beside);
+  std::ofstream(path, std::ios::binary) << bytes;
+}
+
+/// Changes one value by plain SQL and audits; nothing is asked of the rest of the store.
+AuditReport after(const std::string& sql) {
+  room::TempFolder folder;
+  fill(folder.file("s.db"));
+  const auto handle = plain(folder.file("s.db"));
+  REQUIRE(sqlite3_exec(handle.get(), sql.c_str(), nullptr, nullptr, nullptr) == SQLITE_OK);
+  return must(audit(room::open(folder.file("s.db"))->database()));
+}
+
+const Difference& only_record(const AuditReport& report) {
+  for (const Difference& d : report.differences)
+    if (!d.record.empty()) return d;
+  FAIL("no record is named");
+  return report.differences[0];
+}
+
+}  // namespace
+
+TEST_CASE("a store as the program made it is whole, and the page's figures are its own") {
+  room::TempFolder folder;
+  fill(folder.file("s.db"));
+  const auto report = must(audit(room::open(folder.file("s.db"))->database()));
+  for (const Difference& d : report.differences) FAIL_CHECK(d.what);
+  CHECK(report.whole());
+  CHECK(report.records == 12);  // 3 lists, 5 begun, 4 ended
+  CHECK(report.trials == 5);
+  CHECK(report.lists == 3);
+  CHECK(report.findings == 12);
+  REQUIRE(report.heads.size() == 2);  // "station" entered the lists, "bench 1" tried
+  CHECK(report.heads[0].hash.size() == 32);
+}
+
+TEST_CASE("an empty store is whole and has no head") {
+  const auto report = must(audit(room::memory()->database()));
+  CHECK(report.whole());
+  CHECK(report.heads.empty());
+}
+
+TEST_CASE("a changed finding is named by its trial's end, serial and place in the chain") {
+  const AuditReport report = after("UPDATE finding SET value = 0.0001 WHERE trial = 1 AND metric = 1");
+  const Difference& d = only_record(report);
+  CHECK(d.record == "trial ended");
+  CHECK(d.on == "TB-01");
+  CHECK(d.station == "bench 1");
+  CHECK(d.epoch == 1);
+  CHECK(d.seq == 2);
+  CHECK(d.what == "the rows are not what was recorded");
+}
+
+TEST_CASE("a changed limit shows at the first trial that it judged") {
+  CHECK(only_record(after("UPDATE applied_limit SET high = 1")).seq == 2);
+}
+
+TEST_CASE("a changed line of a list is named by the file that brought it") {
+  const Difference d = only_record(after("UPDATE feed SET reel = 2 WHERE id = 1"));
+  CHECK(d.record == "list entered");
+  CHECK(d.on == "feeds.csv");
+}
+
+TEST_CASE("a record taken out of the chain shows at the one after it") {
+  const Difference d = only_record(after("DELETE FROM journal WHERE station = 2 AND seq = 4"));
+  CHECK(d.seq == 5);
+  CHECK(d.what == "record 4 is missing before it");
+}
+
+TEST_CASE("a record rewritten with a hash of its own breaks the chain after it") {
+  const AuditReport report = after("UPDATE journal SET hash = zeroblob(32) WHERE station = 2 AND seq = 3");
+  const Difference& d = only_record(report);
+  CHECK(d.seq == 3);
+  CHECK(d.what == "its hash does not follow from the record and the hash before it");
+}
+
+TEST_CASE("a trial put in behind the journal's back has no record") {
+  const AuditReport report = after(
+      "INSERT INTO trial(uuid, board, station, nest, at_us, state, judgement, origin, attempt, counts, setup, "
+      "revision, depth) SELECT zeroblob(16), board, station, 1, at_us, 1, 0, 1, 3, 0, setup, revision, '' FROM trial "
+      "WHERE id = 2");
+  REQUIRE(report.found == 1);
+  CHECK(report.differences[0].what == "a trial of board TB-01 has no record");
+}
+
+TEST_CASE("a trial marked to speak for its board in place of a NO-GO shows") {
+  const AuditReport report = after(
+      "UPDATE trial SET counts = 2 - id WHERE board = (SELECT id FROM board WHERE serial = 'TB-01'); UPDATE trial SET "
+      "counts = 1 - counts WHERE id < 3");
+  REQUIRE(report.found == 1);
+  CHECK(report.differences[0].what == "board TB-01: the trial that speaks for it is marked wrongly");
+}
+
+TEST_CASE("a foreign trigger and a changed view show") {
+  const AuditReport report = after(
+      "CREATE TRIGGER t AFTER INSERT ON trial BEGIN SELECT 1; END; DROP VIEW carries; CREATE VIEW carries AS SELECT 1");
+  REQUIRE(report.found == 2);
+  CHECK(report.differences[0].what == "the schema's text differs for the view carries on carries");
+  CHECK(report.differences[1].what == "the schema has a foreign trigger t on trial");
+}
+
+TEST_CASE("any single value changed in any column, if it changes an answer, shows") {
+  room::TempFolder folder;
+  const std::string path = folder.file("s.db");
+  fill(path);
+  const std::string whole = bytes_of(path), before = answers(path);
+  REQUIRE(passes(path));
+  int changed = 0, told = 0, columns = 0;
+  std::vector<std::pair<std::string, std::string>> places;
+  {
+    const auto handle = plain(path);
+    sqlite3_stmt* names = nullptr;
+    REQUIRE(sqlite3_prepare_v2(handle.get(),
+                               "SELECT t.name, c.name FROM sqlite_schema t JOIN pragma_table_info(t.name) c WHERE "
+                               "t.type = 'table'",
+                               -1, &names, nullptr) == SQLITE_OK);
+    while (sqlite3_step(names) == SQLITE_ROW)
+      places.emplace_back(reinterpret_cast<const char*>(sqlite3_column_text(names, 0)),
+                          reinterpret_cast<const char*>(sqlite3_column_text(names, 1)));
+    sqlite3_finalize(names);
+  }
+  for (const auto& [table, column] : places) {
+    ++columns;
+    // The first row's value becomes another of its type, or NULL: whichever the table's rules let through.
+    for (const char* to :
+         {"CASE typeof(X) WHEN 'text' THEN X || 'x' WHEN 'blob' THEN CAST(X || x'00' AS BLOB) WHEN 'null' "
+          "THEN NULL ELSE X + 1 END",
+          "NULL", "1", "''"}) {
+      put(path, whole);
+      std::string value = to;
+      for (std::size_t at; (at = value.find('X')) != std::string::npos;) value.replace(at, 1, "\"" + column + "\"");
+      bool done = false;
+      {
+        const auto handle = plain(path);
+        const std::string sql = "UPDATE OR IGNORE " + table + " SET \"" + column + "\" = " + value + " WHERE (\"" +
+                                column + "\") IN (SELECT \"" + column + "\" FROM " + table + " LIMIT 1) OR \"" +
+                                column + "\" IS NULL";
+        done = sqlite3_exec(handle.get(), sql.c_str(), nullptr, nullptr, nullptr) == SQLITE_OK &&
+               sqlite3_changes(handle.get()) > 0;
+      }
+      if (!done || answers(path) == before) continue;
+      ++changed;
+      CAPTURE(table);
+      CAPTURE(column);
+      CAPTURE(value);
+      const bool whole_still = passes(path);
+      CHECK(!whole_still);
+      told += whole_still ? 0 : 1;
+    }
+  }
+  MESSAGE(columns, " columns, ", changed, " changes that alter an answer, ", told, " told of");
+  CHECK(changed > 80);
+}
+
+/// Small pages, so that most bytes of the file are in use.
+void pack(const std::string& path) {
+  const auto handle = plain(path);
+  REQUIRE(sqlite3_exec(handle.get(),
+                       "PRAGMA journal_mode = DELETE; PRAGMA page_size = 512; VACUUM; PRAGMA journal_mode = WAL",
+                       nullptr, nullptr, nullptr) == SQLITE_OK);
+}
+
+TEST_CASE("any of 300 single bytes of the file changed, if it changes an answer, shows") {
+  room::TempFolder folder;
+  const std::string path = folder.file("s.db");
+  fill(path);
+  pack(path);
+  const std::string whole = bytes_of(path), before = answers(path);
+  REQUIRE(passes(path));
+  std::mt19937_64 random(20260109);  // fixed, so that a failure can be repeated
+  int altered = 0, told = 0, beside = 0;
+  for (int i = 0; i < 300; ++i) {
+    std::string bytes = whole;
+    const std::size_t at = random() % bytes.size();
+    const auto flip = static_cast<unsigned char>(1 + random() % 255);
+    bytes[at] = static_cast<char>(static_cast<unsigned char>(bytes[at]) ^ flip);
+    put(path, bytes);
+    const bool alters = answers(path) != before;
+    put(path, bytes);
+    const bool whole_still = passes(path);
+    if (!alters) beside += whole_still ? 0 : 1;
+    if (!alters) continue;
+    ++altered;
+    told += whole_still ? 0 : 1;
+    CAPTURE(at);
+    CHECK(!whole_still);
+  }
+  MESSAGE(altered, " bytes altered an answer, ", told, " told of; of the others ", beside, " told of");
+  CHECK(altered > 30);
+}
