@@ -21,6 +21,10 @@ Json unless_empty(const std::string& text) {
   return text.empty() ? Json(nullptr) : Json(text);
 }
 
+std::string count(std::int64_t n, const char* one) {
+  return fmt::format("{} {}{}", n, one, n == 1 ? "" : "s");
+}
+
 /// "trial ended of TB3-0001 (station bench 1, epoch 1, record 12): the rows are not what was recorded"
 std::string sentence(const Difference& d) {
   if (d.record.empty()) return d.what;
@@ -43,7 +47,10 @@ std::string differences_text(const AuditReport& report) {
 
 std::string heads_text(const AuditReport& report) {
   if (report.heads.empty()) return "It holds no record yet.\n";
-  std::string out = "Note this elsewhere: a chain that is cut off later, rows and all, shows only beside it.\n";
+  std::string out = report.whole()
+                        ? "Note this elsewhere: a chain that is cut off later, rows and all, shows only beside "
+                          "it.\n"
+                        : "Its chains end so; compare with what was noted elsewhere:\n";
   for (const ChainHead& h : report.heads)
     out +=
         printable(fmt::format("  station {}, epoch {}, record {}, {}:", h.station, h.epoch, h.seq, utc_text(h.at_us))) +
@@ -53,11 +60,10 @@ std::string heads_text(const AuditReport& report) {
 
 std::string page(const AuditReport& report, const std::string& store) {
   std::string out = printable(store);
-  out += report.whole()
-             ? ": whole. Every record is as it was made.\n"
-             : fmt::format(": NOT as recorded: {} difference{}.\n", report.found, report.found == 1 ? "" : "s");
-  out += fmt::format("Checked: {} records ({} trials begun, {} lists), {} findings, the file, its schema.\n",
-                     report.records, report.trials, report.lists, report.findings);
+  out += report.whole() ? ": whole. Every record is as it was made.\n"
+                        : fmt::format(": NOT as recorded: {}.\n", count(report.found, "difference"));
+  out += fmt::format("Checked: {} ({} begun, {}), {}, the file, its schema.\n", count(report.records, "record"),
+                     count(report.trials, "trial"), count(report.lists, "list"), count(report.findings, "finding"));
   if (report.steps_back > 0)
     out += fmt::format("{} record{} a stamp before the one before: a clock was set back. Their order is the chain's.\n",
                        report.steps_back, report.steps_back == 1 ? " bears" : "s bear");
