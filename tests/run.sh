@@ -21,7 +21,7 @@ export ASAN_OPTIONS=exitcode=99:detect_leaks=1 UBSAN_OPTIONS=exitcode=99:print_s
 ctest --test-dir build-check --output-on-failure --timeout 300 -j 2
 
 step "build the program"
-build release jigwright benchmark
+build release jigwright benchmark benchmark_store
 
 step "the whole program, as its users call it"
 sh tests/whole.sh build/jigwright
@@ -31,5 +31,6 @@ sh tests/kills.sh build/jigwright
 
 step "benchmark"
 build/benchmark
+build/benchmark_store
 
 step "done"

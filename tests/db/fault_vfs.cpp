@@ -337,9 +337,19 @@ void FaultDisk::damage(const std::string& name, std::size_t at) {
   if (at < file.synced.size()) file.synced.at(at) = file.now.at(at);
 }
 
-std::size_t FaultDisk::size(const std::string& name) const {
-  const auto found = files_.find(name);
-  return found == files_.end() ? 0 : found->second->now.size();
+FaultDisk::Image FaultDisk::image() const {
+  Image out;
+  for (const auto& [name, file] : files_) out[name] = file->now;
+  return out;
+}
+
+void FaultDisk::start_from(const Image& image) {
+  files_.clear();
+  for (const auto& [name, bytes] : image) {
+    const auto file = open(name.c_str(), true);
+    file->now = file->synced = bytes;
+  }
+  durable_ = files_;
 }
 
 }  // namespace jigwright::room

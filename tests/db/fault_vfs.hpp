@@ -41,10 +41,14 @@ class FaultDisk {
   void heal() { fail_at_ = 0; }
   bool fired() const { return fired_; }  ///< since fail_at()
 
+  /// Files by name, as they stand; start_from() puts them on this disk as synced ones, for a store of their own.
+  using Image = std::map<std::string, std::string>;
+  Image image() const;
+  void start_from(const Image& image);
+
   std::int64_t operations() const { return operations_; }
   /// Changes one byte of a file as it stands and as it was synced.
   void damage(const std::string& name, std::size_t at);
-  std::size_t size(const std::string& name) const;
 
   // For the functions that SQLite calls.
   enum class Op { open, read, write, sync, truncate, remove, look };

@@ -28,10 +28,9 @@ struct Told {
 
 class Fault {
  public:
-  explicit Fault(const Case& c) : disk(7), case_(c), factory_({1, 1000, 500, 40, 200}) {
-    auto store = Store::open(path);
-    REQUIRE(store);
-    log(*store.value(), 0);
+  Fault(const Case& c, const room::Factory& factory, const room::FaultDisk::Image& image)
+      : disk(7), case_(c), factory_(factory) {
+    disk.start_from(image);
   }
 
   /// Board 1 with the n-th operation failing, then board 2 on the healed disk, by the same store if it opened.
@@ -101,14 +100,31 @@ class Fault {
   }
 
   Case case_;
-  room::Factory factory_;
+  const room::Factory& factory_;
   std::vector<OpenTrial> healthy_;
 };
 
+room::Factory four_boards() {
+  return room::Factory({1, 1000, 500, 40, 200});
+}
+
+/// A store with one trial, closed.
+room::FaultDisk::Image with_one_trial(const room::Factory& factory) {
+  room::FaultDisk disk(7);
+  {
+    const auto store = room::open(path);
+    const OpenTrial open = room::must(store->begin_trial(factory.start(0)));
+    room::must(store->finish_trial(open, factory.end(0)));
+  }
+  return disk.image();
+}
+
 /// Faults at operation 1, 2, 3 ... until none fires; returns how many there were.
 std::int64_t every_operation(const Case& c) {
+  const room::Factory factory = four_boards();
+  const auto image = with_one_trial(factory);
   for (std::int64_t n = 1;; ++n) {
-    Fault fault(c);
+    Fault fault(c, factory, image);
     fault.play(n);
     INFO("operation ", n, fault.complaints);
     REQUIRE(fault.complaints.empty());
