@@ -138,6 +138,23 @@ std::optional<TrialBody> Bodies::begun(std::string_view uuid) {
 }
 
 std::optional<TrialBody> Bodies::ended(std::string_view uuid, bool check) {
+  return ended(uuid, check, true);
+}
+
+std::optional<TrialBody> Bodies::ended(std::string_view uuid, std::vector<Row> findings) {
+  rows_ = std::move(findings);
+  key_.clear();
+  for (Row& row : rows_) {
+    key_.push_back(row.metric);
+    for (std::optional<double>* number : {&row.value, &row.u}) {
+      if (*number && std::isnan(**number)) number->reset();
+      if (*number && **number == 0) *number = 0.0;
+    }
+  }
+  return ended(uuid, false, false);
+}
+
+std::optional<TrialBody> Bodies::ended(std::string_view uuid, bool check, bool read) {
   Query q = db_.query(
       "SELECT t.id, t.station, b.serial, t.state, t.applied, t.equipment, t.reduction, t.deciding_metric, "
       "t.worst_metric, t.nogo, t.worst_margin, "
@@ -146,7 +163,7 @@ std::optional<TrialBody> Bodies::ended(std::string_view uuid, bool check) {
       Blob{uuid});
   if (!q.next()) return std::nullopt;
   TrialBody out{q.integer(0), q.integer(1), q.text(2), q.integer(3) == 0, false, {}, 0, 0, {}};
-  read_findings(out.id);
+  if (read) read_findings(out.id);
   body_.clear();
   add_columns(body_, q, 11, 20);
   body_.add(applied(q.integer(4))).add(equipment(q.integer(5))).add(reduction(q.integer(6)));

@@ -33,10 +33,20 @@ class Bodies {
  public:
   explicit Bodies(Database& database) : db_(database) {}
 
+  /// A finding's row.
+  struct Row {
+    std::int64_t metric{};
+    std::optional<double> value, u;
+    std::int64_t n{}, state{}, verdict{};
+  };
+
   /// nullopt when no trial bears the uuid, or a row that it names is missing.
   std::optional<TrialBody> begun(std::string_view uuid);
   /// @param check  work trial.nogo and worst_margin out again
   std::optional<TrialBody> ended(std::string_view uuid, bool check = false);
+  /// The same by who has just written the findings: as written, by rising metric. A NaN stands as NULL, -0 as 0, which
+  /// is how SQLite gives them back.
+  std::optional<TrialBody> ended(std::string_view uuid, std::vector<Row> findings);
 
   struct Entry {
     std::string sha256;
@@ -59,11 +69,6 @@ class Bodies {
     std::vector<std::size_t> order;  ///< by content, so that keys don't matter
     std::string sha256;
   };
-  struct Row {
-    Id metric{};
-    std::optional<double> value, u;
-    std::int64_t n{}, state{}, verdict{};
-  };
   template <class Read>
   const std::string& known(Known& held, Id id, Read read);
   const std::string& setup(Id id);
@@ -75,6 +80,7 @@ class Bodies {
   const std::string& station(Id id);
   const Metrics& metrics();
   const std::vector<Limited>& limits(Id applied);
+  std::optional<TrialBody> ended(std::string_view uuid, bool check, bool read);
   void read_findings(Id trial);
   std::int64_t add_readings(Id trial);
   std::string misfit(const std::optional<Id>& applied, std::int64_t nogo, std::optional<double> worst);

@@ -146,10 +146,10 @@ Result<Done> TrialWriter::finish(const OpenTrial& open, const TrialEnd& end) {
     tally.worst_margin = judged.margin;
   }
   close(open, end, tally, applied(end.findings, metrics));
-  insert_findings(open, end.findings, metrics);
+  std::vector<Bodies::Row> findings = insert_findings(open, end.findings, metrics);
   db_.run("INSERT INTO reading_blob VALUES(?, ?, ?)", open.id, end.readings_format, Blob{end.readings});
   settle_counts(db_.first("SELECT board FROM trial WHERE id = ?", open.id).value_or(0));
-  journal_ended(open, end.took_ms);
+  journal_ended(open, end.took_ms, std::move(findings));
   const auto done = transaction.commit();
   if (!done) forget();
   return done;
@@ -172,18 +172,19 @@ void TrialWriter::close(const OpenTrial& open, const TrialEnd& end, const Tally&
               "a trial is ended once, in the store where it began"});
 }
 
-void TrialWriter::insert_findings(const OpenTrial& open, const std::vector<FindingRow>& rows,
-                                  const std::vector<Id>& metrics) {
-  // In the key's order, so that the table grows at its right edge.
-  std::vector<std::size_t> at(rows.size());
-  for (std::size_t i = 0; i < at.size(); ++i) at[i] = i;
-  std::sort(at.begin(), at.end(), [&](std::size_t a, std::size_t b) { return metrics[a] < metrics[b]; });
-  for (std::size_t i : at) {
-    const Judged& judged = rows[i].judged;
-    const Finding& f = judged.finding;
-    db_.run("INSERT INTO finding VALUES(?, ?, ?, ?, ?, ?, ?)", open.id, metrics[i], f.value, f.u, f.n,
-            static_cast<int>(f.state), static_cast<int>(judged.verdict));
+std::vector<Bodies::Row> TrialWriter::insert_findings(const OpenTrial& open, const std::vector<FindingRow>& rows,
+                                                      const std::vector<Id>& metrics) {
+  std::vector<Bodies::Row> out;
+  for (std::size_t i = 0; i < rows.size(); ++i) {
+    const Finding& f = rows[i].judged.finding;
+    out.push_back({metrics[i], f.value, f.u, f.n, static_cast<int>(f.state), static_cast<int>(rows[i].judged.verdict)});
   }
+  // In the key's order, so that the table grows at its right edge.
+  std::sort(out.begin(), out.end(), [](const auto& a, const auto& b) { return a.metric < b.metric; });
+  for (const Bodies::Row& row : out)
+    db_.run("INSERT INTO finding VALUES(?, ?, ?, ?, ?, ?, ?)", open.id, row.metric, row.value, row.u, row.n, row.state,
+            row.verdict);
+  return out;
 }
 
 TrialWriter::Id TrialWriter::metric(const Metric& m) {
@@ -301,8 +302,8 @@ void TrialWriter::journal_begun(const OpenTrial& open, std::int64_t at_us) {
 }
 
 /// Stamped by the trial's own time: its begin and what it took.
-void TrialWriter::journal_ended(const OpenTrial& open, std::int64_t took_ms) {
-  const auto body = bodies_.ended(bytes(open.uuid));
+void TrialWriter::journal_ended(const OpenTrial& open, std::int64_t took_ms, std::vector<Bodies::Row> findings) {
+  const auto body = bodies_.ended(bytes(open.uuid), std::move(findings));
   if (!body || db_.failed()) return;
   const auto began_us = db_.first("SELECT at_us FROM trial WHERE id = ?", open.id).value_or(0);
   append_record(db_, body->station, RecordKind::trial_ended, bytes(open.uuid), began_us + took_ms * 1000, body->sha256);

@@ -46,12 +46,14 @@ class TrialWriter {
   Id instrument(const InstrumentIdentity& identity);
   Id reduction(std::vector<std::pair<std::string, int>> versions);
   void insert_open(const TrialStart& start, OpenTrial& open);
-  void insert_findings(const OpenTrial& open, const std::vector<FindingRow>& rows, const std::vector<Id>& metrics);
+  /// @return the rows as written
+  std::vector<Bodies::Row> insert_findings(const OpenTrial& open, const std::vector<FindingRow>& rows,
+                                           const std::vector<Id>& metrics);
   void insert_applied_limit(Id applied, Id metric, const Limit& limit);
   void close(const OpenTrial& open, const TrialEnd& end, const Tally& tally, Id applied);
   void settle_counts(Id board);
   void journal_begun(const OpenTrial& open, std::int64_t at_us);
-  void journal_ended(const OpenTrial& open, std::int64_t took_ms);
+  void journal_ended(const OpenTrial& open, std::int64_t took_ms, std::vector<Bodies::Row> findings);
   void forget();
 
   Database& db_;

@@ -180,6 +180,25 @@ TEST_CASE("a store as the program made it is whole, and the page's figures are i
   CHECK(report.heads[0].hash.size() == 32);
 }
 
+TEST_CASE("values that SQLite gives back otherwise than they went in are whole: NaN, -0, whole numbers, infinity") {
+  const auto store = room::memory();
+  const OpenTrial open = must(store->begin_trial(room::start("TB-01")));
+  TrialEnd end = room::end(Judgement::go, -0.0);
+  end.findings[1].judged.finding.value = end.findings[1].judged.finding.u = 0;
+  end.findings[1].judged.margin = margin(*end.findings[1].limit, 0);
+  end.findings[2].judged.finding.value = -std::numeric_limits<double>::infinity();
+  for (double value : {-0.0, 5.0, std::numeric_limits<double>::quiet_NaN()}) {
+    FindingRow row = end.findings[2];
+    row.metric.name.variant = std::to_string(value);
+    row.judged.finding.value = value;
+    end.findings.push_back(row);
+  }
+  must(store->finish_trial(open, end));
+  const auto report = must(audit(store->database()));
+  for (const Difference& d : report.differences) FAIL_CHECK(d.what);
+  CHECK(report.findings == 6);
+}
+
 TEST_CASE("an empty store is whole and has no head") {
   const auto report = must(audit(room::memory()->database()));
   CHECK(report.whole());
