@@ -10,6 +10,7 @@
 #include "sequencer/station_file.hpp"
 #include "station/commands.hpp"
 #include "station/exit_codes.hpp"
+#include "station/recompute.hpp"
 
 namespace {
 
@@ -103,6 +104,9 @@ int main(int argc, char** argv) {
   AuditOptions auditing;
   auto* audit_command = app.add_subcommand("audit", "Check that the store holds what was recorded, unchanged");
   audit_command->add_flag("--json", auditing.json, "as JSON");
+  bool recomputing = false;
+  audit_command->add_flag("--recompute", recomputing,
+                          "and work every finding and judgement out again from raw readings");
 
   LogOptions logging;
   auto* log_command = app.add_subcommand("log", "Who did what when, newest last");
@@ -149,7 +153,12 @@ int main(int argc, char** argv) {
   entering.store = tracing.store = showing.store = auditing.store = logging.store = store;
   entering.station_name = station->name;
   if (*enter_command) return enter(entering);
-  if (*audit_command) return audit(auditing);
+  if (*audit_command) {
+    const int whole = audit(auditing);
+    if (!recomputing) return whole;
+    const RecomputeOptions again{store, auditing.json};
+    return std::max(whole, recompute(again));
+  }
   if (*log_command) return log(logging);
   if (*trace_command) return trace(tracing);
   return show(showing);

@@ -102,6 +102,7 @@ grep -q "stopped at the station" "$work/out" && good || bad "no reason after Ctr
 
 # The journal of all that is whole; a value changed behind it is found and named.
 expect 0 "whole. Every record is as it was made." audit
+expect 0 "agree to the last bit, 0 do not" audit --recompute
 expect 0 "boards entered" log --serial TB3-0001
 ask "update finding set value = value * 2 where trial = 1 and metric = 1"
 expect 5 "trial ended of TB3-0001" audit
