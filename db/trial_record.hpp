@@ -50,6 +50,8 @@ struct FindingRow {
 };
 
 struct TrialEnd {
+  /// UTC at the end, for the journal; 0 = the start's and took_ms. Virtual time makes them differ.
+  std::int64_t at_us{};
   std::int64_t took_ms{};
   Outcome outcome;  ///< `deciding` is an index into `findings`
   std::vector<FindingRow> findings;

@@ -149,7 +149,7 @@ Result<Done> TrialWriter::finish(const OpenTrial& open, const TrialEnd& end) {
   std::vector<Bodies::Row> findings = insert_findings(open, end.findings, metrics);
   db_.run("INSERT INTO reading_blob VALUES(?, ?, ?)", open.id, end.readings_format, Blob{end.readings});
   settle_counts(db_.first("SELECT board FROM trial WHERE id = ?", open.id).value_or(0));
-  journal_ended(open, end.took_ms, std::move(findings));
+  journal_ended(open, end, std::move(findings));
   const auto done = transaction.commit();
   if (!done) forget();
   return done;
@@ -301,12 +301,13 @@ void TrialWriter::journal_begun(const OpenTrial& open, std::int64_t at_us) {
     append_record(db_, body->station, RecordKind::trial_begun, bytes(open.uuid), at_us, body->sha256);
 }
 
-/// Stamped by the trial's own time: its begin and what it took.
-void TrialWriter::journal_ended(const OpenTrial& open, std::int64_t took_ms, std::vector<Bodies::Row> findings) {
+/// Stamped by the clock at the trial's end; without one, by its begin and what it took.
+void TrialWriter::journal_ended(const OpenTrial& open, const TrialEnd& end, std::vector<Bodies::Row> findings) {
   const auto body = bodies_.ended(bytes(open.uuid), std::move(findings));
   if (!body || db_.failed()) return;
   const auto began_us = db_.first("SELECT at_us FROM trial WHERE id = ?", open.id).value_or(0);
-  append_record(db_, body->station, RecordKind::trial_ended, bytes(open.uuid), began_us + took_ms * 1000, body->sha256);
+  append_record(db_, body->station, RecordKind::trial_ended, bytes(open.uuid),
+                end.at_us != 0 ? end.at_us : began_us + end.took_ms * 1000, body->sha256);
 }
 
 void TrialWriter::forget() {

@@ -53,7 +53,7 @@ class TrialWriter {
   void close(const OpenTrial& open, const TrialEnd& end, const Tally& tally, Id applied);
   void settle_counts(Id board);
   void journal_begun(const OpenTrial& open, std::int64_t at_us);
-  void journal_ended(const OpenTrial& open, std::int64_t took_ms, std::vector<Bodies::Row> findings);
+  void journal_ended(const OpenTrial& open, const TrialEnd& end, std::vector<Bodies::Row> findings);
   void forget();
 
   Database& db_;

@@ -243,6 +243,7 @@ Task<TrialResult> Trials::run(int nest, std::string serial, std::string order) {
   const std::string unsafe = co_await player.make_safe();
   end.instruments = identities_;
   end.took_ms = std::chrono::duration_cast<std::chrono::milliseconds>(bench_.clock().now() - began).count();
+  end.at_us = setup_.utc_us ? setup_.utc_us() : 0;
   conclude(body.evaluation(), unsafe, end);
 
   std::string action = next_action(end.outcome);
