@@ -12,6 +12,7 @@ using Failure = room::FaultDisk::Failure;
 namespace {
 
 constexpr const char* path = "store.db";
+constexpr std::int64_t audited_every = 7;  ///< operations
 
 struct Case {
   Failure failure;
@@ -55,7 +56,7 @@ class Fault {
       }
     }
     if (case_.power_cut) disk.power_up();
-    compare();
+    compare(n % audited_every == 0);
   }
 
   room::FaultDisk disk;
@@ -85,13 +86,13 @@ class Fault {
     if (done) healthy_.push_back(open.value());
     return done;
   }
-  void compare() {
+  void compare(bool audited) {
     auto store = Store::open(path);
     if (!store) {
       complaints += describe(store.error()) + "\n";
       return;
     }
-    const room::Held held = room::held(*store.value(), factory_);
+    const room::Held held = room::held(*store.value(), factory_, audited);
     complaints += held.complaints;
     for (const OpenTrial& trial : healthy_)
       if (held.of(trial) != Kept::whole) complaints += "a trial on the healthy disk is lost\n";

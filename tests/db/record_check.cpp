@@ -2,6 +2,7 @@
 
 #include <cstdlib>
 
+#include "db/audit.hpp"
 #include "db/sqlite.hpp"
 
 namespace jigwright::room {
@@ -55,12 +56,19 @@ void check_none(Database& db, Sql count, const char* complaint, Held& out) {
   if (db.first(count).value_or(1) != 0) out.complaints += std::string(complaint) + "\n";
 }
 
-}  // namespace
+void check_chain(Database& db, Held& out) {
+  const auto report = audit(db);
+  if (!report) {
+    out.complaints += describe(report.error()) + "\n";
+    return;
+  }
+  for (const Difference& d : report.value().differences)
+    out.complaints += "audit: " + d.what + ", " + d.record + " " + d.on + "\n";
+}
 
-Held held(Store& store, const Factory& factory) {
-  Database& db = store.database();
+/// All but the chain, in one reading transaction.
+void check_rows(Database& db, const Factory& factory, Held& out) {
   Transaction reading(db, Transaction::Kind::read);
-  Held out;
   check_trials(db, factory, out);
   check_none(db, "SELECT count(*) FROM finding WHERE trial NOT IN (SELECT id FROM trial WHERE state = 1)",
              "findings without an ended trial", out);
@@ -73,6 +81,14 @@ Held held(Store& store, const Factory& factory) {
   while (integrity.next())
     if (integrity.text(0) != "ok") out.complaints += integrity.text(0) + "\n";
   if (db.failed()) out.complaints += describe(db.error()) + "\n";
+}
+
+}  // namespace
+
+Held held(Store& store, const Factory& factory, bool audited) {
+  Held out;
+  check_rows(store.database(), factory, out);
+  if (audited) check_chain(store.database(), out);
   return out;
 }
 

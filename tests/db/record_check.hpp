@@ -13,7 +13,7 @@ enum class Kept { nothing, open, whole };
 
 /// What the store holds of the trials, by uuid. Everything that is not plainly one of the three goes to `complaints`:
 /// a half record, a value that differs, findings or readings without an ended trial, a board without its one speaking
-/// trial, SQLite's own check.
+/// trial, SQLite's own check and, on request, an audit of the chain (slow).
 struct Held {
   std::map<std::string, Kept> trials;
   std::string complaints;
@@ -24,6 +24,6 @@ struct Held {
 };
 
 /// Serials must be the factory's, each trial of a board its trial of the factory.
-Held held(Store& store, const Factory& factory);
+Held held(Store& store, const Factory& factory, bool audited = false);
 
 }  // namespace jigwright::room
