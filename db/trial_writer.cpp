@@ -1,6 +1,7 @@
 #include "db/trial_writer.hpp"
 
 #include <algorithm>
+#include <cmath>
 
 #include "db/digest.hpp"
 #include "db/journal.hpp"
@@ -24,6 +25,22 @@ std::optional<std::string> unless_empty(const std::string& text) {
 bool same(const std::vector<Document>& a, const std::vector<Document>& b) {
   return std::equal(a.begin(), a.end(), b.begin(), b.end(),
                     [](const Document& x, const Document& y) { return x.kind == y.kind && x.text == y.text; });
+}
+
+bool same(double a, double b) {
+  return a == b || (std::isnan(a) && std::isnan(b));
+}
+
+bool same(const Bounds& a, const Bounds& b) {
+  return a.low == b.low && a.high == b.high;
+}
+
+bool same(const std::optional<Limit>& a, const std::optional<Limit>& b) {
+  if (!a || !b) return a.has_value() == b.has_value();
+  return same(a->specification, b->specification) && same(a->nominal, b->nominal) && a->guard == b->guard &&
+         same(a->share, b->share) && same(a->budget_U, b->budget_U) &&
+         same(a->budget_of_reading, b->budget_of_reading) && same(a->width, b->width) && same(a->applied, b->applied) &&
+         a->reason == b->reason;
 }
 
 }  // namespace
@@ -202,7 +219,21 @@ TrialWriter::Id TrialWriter::metric(const Metric& m) {
   return *id;
 }
 
+/// Most trials are judged by the limits of the one before: no need to hash them again.
 TrialWriter::Id TrialWriter::applied(const std::vector<FindingRow>& rows, const std::vector<Id>& metrics) {
+  const bool again = last_applied_ && last_applied_->metrics == metrics &&
+                     std::equal(rows.begin(), rows.end(), last_applied_->limits.begin(), last_applied_->limits.end(),
+                                [](const FindingRow& row, const auto& limit) { return same(row.limit, limit); });
+  if (again) return last_applied_->id;
+  const Id id = settle_applied(rows, metrics);
+  last_applied_.reset();
+  if (db_.failed()) return id;
+  last_applied_.emplace(Applied{metrics, {}, id});
+  for (const FindingRow& row : rows) last_applied_->limits.push_back(row.limit);
+  return id;
+}
+
+TrialWriter::Id TrialWriter::settle_applied(const std::vector<FindingRow>& rows, const std::vector<Id>& metrics) {
   Canonical record;
   for (std::size_t i = 0; i < rows.size(); ++i) {
     if (!rows[i].limit) continue;
@@ -313,6 +344,7 @@ void TrialWriter::journal_ended(const OpenTrial& open, const TrialEnd& end, std:
 void TrialWriter::forget() {
   bodies_.forget();
   setup_.reset();
+  last_applied_.reset();
   metrics_.clear();
   applied_.clear();
   equipment_.clear();

@@ -27,6 +27,11 @@ class TrialWriter {
     std::vector<Document> documents;
     Id setup{}, revision{};
   };
+  struct Applied {
+    std::vector<Id> metrics;
+    std::vector<std::optional<Limit>> limits;
+    Id id{};
+  };
   struct Tally {
     int missed{0};
     std::optional<Id> deciding, worst;
@@ -42,6 +47,7 @@ class TrialWriter {
   Id revision(const TrialStart& start, std::optional<Id> document);
   Id metric(const Metric& metric);
   Id applied(const std::vector<FindingRow>& rows, const std::vector<Id>& metrics);
+  Id settle_applied(const std::vector<FindingRow>& rows, const std::vector<Id>& metrics);
   Id equipment(const std::vector<InstrumentIdentity>& instruments);
   Id instrument(const InstrumentIdentity& identity);
   Id reduction(std::vector<std::pair<std::string, int>> versions);
@@ -59,7 +65,8 @@ class TrialWriter {
   Database& db_;
   UuidMaker& uuids_;
   Bodies bodies_;
-  std::optional<Setup> setup_;  ///< of the last trial begun
+  std::optional<Setup> setup_;           ///< of the last trial begun
+  std::optional<Applied> last_applied_;  ///< of the last trial ended
   std::map<std::tuple<std::string, std::string, std::string, int, int>, Id> metrics_;
   std::unordered_map<std::string, Id> applied_, equipment_, reduction_;  ///< by digest
 };

@@ -3,6 +3,7 @@
 #include <sqlite3.h>
 
 #include <fstream>
+#include <functional>
 
 #include "db/sqlite.hpp"
 #include "tests/db/room.hpp"
@@ -162,6 +163,32 @@ TEST_CASE("a changed limit of the same revision number is kept beside the old on
   must(store->finish_trial(open, end));
   CHECK(number(*store, "SELECT count(*) FROM applied") == 2);
   CHECK(number(*store, "SELECT count(DISTINCT high) FROM results WHERE metric = 'offset' AND variant = 'x1'") == 2);
+}
+
+TEST_CASE("any one field of any one limit that changes makes another set, and the old set is found again") {
+  const auto store = room::memory();
+  std::vector<std::function<void(Limit&)>> changes = {
+      [](Limit&) {},
+      [](Limit& l) { l.specification.low = -0.6e-3; },
+      [](Limit& l) { l.specification.high.reset(); },
+      [](Limit& l) { l.nominal = std::numeric_limits<double>::quiet_NaN(); },
+      [](Limit& l) { l.guard = Guard::typed; },
+      [](Limit& l) { l.share = 0.5; },
+      [](Limit& l) { l.budget_U = 21e-6; },
+      [](Limit& l) { l.budget_of_reading = 1e-6; },
+      [](Limit& l) { l.width = 21e-6; },
+      [](Limit& l) { l.applied.low = -0.47e-3; },
+      [](Limit& l) { l.applied.high.reset(); },
+      [](Limit& l) { l.reason = "by agreement"; },
+      [](Limit&) {}};
+  for (const auto& change : changes) {
+    const OpenTrial open = must(store->begin_trial(room::start("TB3-0001")));
+    TrialEnd end = room::end(Judgement::go);
+    change(*end.findings[1].limit);
+    must(store->finish_trial(open, end));
+  }
+  CHECK(number(*store, "SELECT count(*) FROM applied") == 12);
+  CHECK(number(*store, "SELECT applied FROM trial ORDER BY id DESC LIMIT 1") == 1);
 }
 
 TEST_CASE("simulated and measured trials don't share a store, and the error names both") {
