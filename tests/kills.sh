@@ -50,6 +50,7 @@ same() { if [ "$2" = "$3" ]; then good; else bad "$1: $2, expected $3"; fi; }
 shown=$(wc -l <"$work/shown")
 held=$(wc -l <"$work/held")
 open=$(ask "select count(*) from trial where state = 0")
+if "$jigwright" --store "$work/store.db" audit >"$work/out" 2>&1; then good; else bad "audit: $(head -n 3 "$work/out")"; fi
 same "integrity" "$(ask "pragma integrity_check")" ok
 same "findings of trials that never ended" "$(ask "select count(*) from finding where trial in (select id from trial where state = 0)")" 0
 same "ended trials without findings or readings" "$(ask "select count(*) from trial where state = 1 and (id not in (select trial from finding) or id not in (select trial from reading_blob))")" 0
