@@ -31,6 +31,6 @@ sh tests/kills.sh build/jigwright
 
 step "benchmark"
 build/benchmark
-build/benchmark_store
+build/benchmark_store 5000
 
 step "done"
