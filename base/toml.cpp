@@ -400,6 +400,18 @@ Located<std::string> TableReader::need_choice(std::string_view key, const std::v
   return choice(key, words).value_or(Located<std::string>{words.empty() ? "" : words.front(), node_.region});
 }
 
+Located<std::string> TableReader::need_id(std::string_view thing, std::vector<Located<std::string>>& seen) {
+  auto id = need_text("id");
+  if (id.value.empty()) return id;
+  rename(fmt::format("{} \"{}\"", thing, id.value));
+  for (const auto& other : seen)
+    if (other.value == id.value)
+      faults_.fault(id.region, fmt::format("{} \"{}\" is there twice", thing, id.value),
+                    fmt::format("first at line {}; give each its own id", other.region.line));
+  seen.push_back(id);
+  return id;
+}
+
 std::vector<Located<std::string>> TableReader::texts(std::string_view key) {
   std::vector<Located<std::string>> out;
   const Node* n = ask(key);

@@ -84,6 +84,9 @@ class TableReader {
   /// One of the words; a misspelt one is a fault with the nearest.
   std::optional<Located<std::string>> choice(std::string_view key, const std::vector<std::string>& words);
   Located<std::string> need_choice(std::string_view key, const std::vector<std::string>& words);
+  /// The key "id", which then names the table in messages ("load \"1 nF\""); a second use is a fault that names the
+  /// first.
+  Located<std::string> need_id(std::string_view thing, std::vector<Located<std::string>>& seen);
   /// A text or an array of texts.
   std::vector<Located<std::string>> texts(std::string_view key);
   std::vector<Located<std::string>> need_texts(std::string_view key);

@@ -114,7 +114,7 @@ class PlanReader {
     std::vector<Located<std::string>> seen;
     for (const Node* table : tables) {
       TableReader r(*table, "[[board.range]]", faults_);
-      const auto id = read_id(r, "range", seen);
+      const auto id = r.need_id("range", seen);
       const double gain = read_gain(r);
       if (plan_.board.range(id.value) == nullptr) plan_.board.ranges.push_back({id.value, gain, id.region});
       r.finish();
@@ -162,19 +162,6 @@ class PlanReader {
 
   // --- the steps --------------------------------------------------------------------------------------------------
 
-  /// The id; a second use is a fault that names the first.
-  Located<std::string> read_id(TableReader& r, std::string_view thing, std::vector<Located<std::string>>& seen) {
-    auto id = r.need_text("id");
-    if (id.value.empty()) return id;
-    r.rename(fmt::format("{} \"{}\"", thing, id.value));
-    for (const auto& other : seen)
-      if (other.value == id.value)
-        faults_.fault(id.region, fmt::format("{} \"{}\" is there twice", thing, id.value),
-                      fmt::format("first at line {}; give each its own id", other.region.line));
-    seen.push_back(id);
-    return id;
-  }
-
   void read_steps() {
     const auto tables = root_.tables("step");
     if (tables.empty() && (!root_.has("step") || root_.node("step")->array() != nullptr))
@@ -182,7 +169,7 @@ class PlanReader {
     std::vector<Located<std::string>> seen;
     for (const Node* table : tables) {
       TableReader r(*table, "[[step]]", faults_);
-      const auto id = read_id(r, "step", seen);
+      const auto id = r.need_id("step", seen);
       if (const StepKind* kind = read_kind(r)) add_step(r, *table, *kind, id.value);
     }
   }
