@@ -28,7 +28,7 @@ int try_boards(const TryOptions& options);
 struct LintOptions {
   std::string plan;
   bool json{false};
-  bool settings{false};  ///< every setting, not only the steps
+  bool brief{false};  ///< the steps only, not every setting
 };
 int lint(const LintOptions& options);
 

@@ -100,7 +100,7 @@ std::string caution(const Stored& s) {
 
 void print_settings(const ReadyPlan& plan, const std::vector<SettingCost>& all) {
   static constexpr const char* phases[] = {"contact", "unpowered", "powered"};
-  fmt::print("\n{:<44} {:<10} {:>6} {:>9} {:>9} {:>9} {:>9}\n", "setting", "phase", "relays", "relays'", "settling",
+  fmt::print("{:<44} {:<10} {:>6} {:>9} {:>9} {:>9} {:>9}\n", "setting", "phase", "relays", "relays'", "settling",
              "readings", "reading");
   fmt::print("{:<44} {:<10} {:>6} {:>9} {:>9} {:>9} {:>9}\n", "", "", "moved", "time", "", "", "time");
   for (const SettingCost& c : all)
@@ -111,9 +111,10 @@ void print_settings(const ReadyPlan& plan, const std::vector<SettingCost>& all) 
                                       [](const Setting& s) { return s.only_if_doubtful; });
   if (doubtful > 0)
     fmt::print("and {} re-reads of the known value, only where a step overloads or never settles\n", doubtful);
+  fmt::print("\n");
 }
 
-void print_plan(const ReadyPlan& plan, bool settings) {
+void print_plan(const ReadyPlan& plan, bool brief) {
   const auto all = costs(plan);
   std::vector<Total> steps(plan.plan.steps.size());
   Total total;
@@ -131,6 +132,7 @@ void print_plan(const ReadyPlan& plan, bool settings) {
   fmt::print("{} ({})\n", plan.plan.title, plan.plan.id);
   fmt::print("jig \"{}\", {} nest{}; limit set \"{}\" revision {}\n\n", plan.jig->name, plan.jig->nests,
              plan.jig->nests == 1 ? "" : "s", plan.limits.id, plan.limits.revision);
+  if (!brief) print_settings(plan, all);
   fmt::print("{:<16} {:<18} {:>8} {:>8} {:>8} {:>8} {:>7} {:>9}\n", "step", "kind", "settings", "readings", "findings",
              "limited", "relays", "time");
   for (std::size_t i = 0; i < steps.size(); ++i)
@@ -145,7 +147,6 @@ void print_plan(const ReadyPlan& plan, bool settings) {
              time_text(total.reading_s), time_text(total.settle_s), time_text(total.moving_s));
   fmt::print("At worst (every stop rule to its end, every known value re-read): {}; the plan's own limit is {}.\n",
              time_text(plan.full.worst_s), time_text(plan.plan.time_limit_s));
-  if (settings) print_settings(plan, all);
   fmt::print("\nCaution. {}", caution(stored(plan)));
 }
 
@@ -196,7 +197,7 @@ int lint(const LintOptions& options) {
                faults.count(Severity::warning), faults.count(Severity::warning) == 1 ? "" : "s");
     return exit_files;
   }
-  print_plan(*plan, options.settings);
+  print_plan(*plan, options.brief);
   return exit_go;
 }
 

@@ -77,7 +77,7 @@ int main(int argc, char** argv) {
   LintOptions linting;
   auto* lint_command = app.add_subcommand("lint", "Check plan, jig and limits, and show what the plan will do");
   lint_command->add_option("PLAN", linting.plan, "plan file")->required();
-  lint_command->add_flag("--settings", linting.settings, "list every setting");
+  lint_command->add_flag("--brief", linting.brief, "the steps only, not every setting");
   lint_command->add_flag("--json", linting.json, "as JSON");
 
   auto* faults_command = app.add_subcommand("faults", "List the faults that --fault can give the simulated jig");

@@ -37,7 +37,8 @@ expect 4 "did you mean \"try\"" tray plan-b.toml
 expect 4 "control characters" try plan-b.toml --serial "$(printf "TB3\033[31m")"
 expect 4 "longer than 64" try plan-b.toml --serial "$(printf "%080d" 1)"
 expect 0 "Where the time goes" lint plan-b.toml
-expect 0 "under-load/" lint --settings plan-b.toml
+expect 0 "under-load/" lint plan-b.toml
+expect 0 "Where the time goes" lint --brief plan-b.toml
 expect 0 '"settings"' lint --json plan-b.toml
 expect 0 "Reel R-7003" trace --reel R-7003
 expect 4 'R-7003' trace --reel R-703
