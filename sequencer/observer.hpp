@@ -36,6 +36,8 @@ class Person {
   virtual ~Person() = default;
   /// Yes = 1, no = 0, or the value. state refused when the person declines or nobody can be asked.
   virtual Task<Result<Reading>> ask(int nest, const Ask& question, Duration deadline) = 0;
+  /// All trials are being ended: a question under way answers at once, with an Error of kind person.
+  virtual void stop() {}
 };
 
 }  // namespace jigwright

@@ -123,6 +123,7 @@ void Trials::stop(std::string reason) {
   stop_.set = true;
   stop_.reason = std::move(reason);
   leases_.cancel_all();
+  person_.stop();
   bench_.clock().cancel_all();
 }
 

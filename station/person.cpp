@@ -5,6 +5,7 @@
 #include <boost/asio/posix/basic_stream_descriptor.hpp>
 #include <boost/asio/read_until.hpp>
 #include <boost/asio/redirect_error.hpp>
+#include <boost/asio/steady_timer.hpp>
 #include <boost/asio/streambuf.hpp>
 #include <boost/asio/use_awaitable.hpp>
 #include <charconv>
@@ -49,9 +50,9 @@ class StationPerson final : public Person {
  public:
   StationPerson(asio::io_context& io, Clock& clock, std::vector<std::pair<std::string, std::string>> answers, bool json,
                 bool terminal)
-      : clock_(clock), answers_(std::move(answers)), json_(json), terminal_(terminal), input_(io) {}
+      : clock_(clock), answers_(std::move(answers)), json_(json), terminal_(terminal), input_(io), patience_(io) {}
 
-  Task<Result<Reading>> ask(int nest, const Ask& question, Duration) override {
+  Task<Result<Reading>> ask(int nest, const Ask& question, Duration deadline) override {
     for (const auto& [step, answer] : answers_) {
       if (step != question.step) continue;
       const auto value = understood(answer, question);
@@ -64,7 +65,12 @@ class StationPerson final : public Person {
       co_return Error{Error::Kind::person, fmt::format("nobody is here to answer \"{}\"", question.question),
                       "step " + question.step,
                       fmt::format("give --answer {}=..., or run it on a terminal", question.step)};
-    co_return co_await converse(nest, question);
+    co_return co_await converse(nest, question, deadline);
+  }
+
+  void stop() override {
+    stopped_ = true;
+    if (input_.is_open()) input_.cancel();
   }
 
  private:
@@ -97,13 +103,22 @@ class StationPerson final : public Person {
     std::fflush(stdout);
   }
 
-  Task<Result<Reading>> converse(int nest, const Ask& question) {
+  /// Patience is the computer's own time: virtual time stands still meanwhile.
+  void arm(Duration deadline) {
+    patience_.expires_after(deadline - clock_.now());
+    patience_.async_wait([this](const boost::system::error_code& fault) {
+      if (!fault) input_.cancel();
+    });
+  }
+
+  Task<Result<Reading>> converse(int nest, const Ask& question, Duration deadline) {
     const Error nobody{
         Error::Kind::person, fmt::format("no answer to \"{}\"", question.question), "step " + question.step, {}};
     // Virtual time stands still while a person thinks.
     const Clock::Hold hold(clock_);
     if (!input_.is_open()) input_.assign(::dup(STDIN_FILENO));
-    for (int attempt = 0; attempt < 3; ++attempt) {
+    arm(deadline);
+    for (int attempt = 0; attempt < 3 && !stopped_; ++attempt) {
       put(nest, question);
       boost::system::error_code fault;
       const Await token{};
@@ -111,11 +126,15 @@ class StationPerson final : public Person {
       std::istream in(&buffer_);
       std::string line;
       std::getline(in, line);
-      if (fault && line.empty()) co_return nobody;
+      if (fault && line.empty()) break;
       const auto value = json_ ? from_json(line, question) : understood(line, question);
-      if (value) co_return answered(*value);
+      if (value) {
+        patience_.cancel();
+        co_return answered(*value);
+      }
       if (!json_) fmt::print("That was not understood. ");
     }
+    patience_.cancel();
     co_return nobody;
   }
 
@@ -124,7 +143,9 @@ class StationPerson final : public Person {
   bool json_;
   bool terminal_;
   asio::posix::basic_stream_descriptor<Exec> input_;
+  asio::basic_waitable_timer<std::chrono::steady_clock, asio::wait_traits<std::chrono::steady_clock>, Exec> patience_;
   asio::streambuf buffer_{4096};
+  bool stopped_{false};
 };
 
 }  // namespace

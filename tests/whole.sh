@@ -58,6 +58,22 @@ got=0; echo '{"answer": true}' | "$jigwright" --store "$work/store.db" try "$wor
 same "exit with an answer as JSON" "$got" 0
 grep -q '"event":"question"' "$work/out" && good || bad "no event for the question"
 
+# Ctrl-C while the question waits: no answer is needed to end, on either clock.
+mkfifo "$work/answers"
+for clock in "" --real-time; do
+  exec 9<>"$work/answers"
+  "$jigwright" --store "$work/store.db" try "$work/plan.toml" --serial TB3-0001 --json $clock <"$work/answers" >"$work/out" 2>&1 &
+  pid=$!
+  for i in $(seq 60); do grep -q '"event":"question"' "$work/out" && break; sleep 0.2; done
+  kill -INT $pid
+  for i in $(seq 50); do kill -0 $pid 2>/dev/null || break; sleep 0.1; done
+  kill -9 $pid 2>/dev/null && bad "a question outlived Ctrl-C $clock"
+  got=0; wait $pid || got=$?
+  same "exit after Ctrl-C at a question $clock" "$got" 2
+  grep -q "stopped at the station" "$work/out" && good || bad "no reason after Ctrl-C at a question $clock"
+  exec 9>&-
+done
+
 # A store that can't be written: no board is tried.
 got=0; "$jigwright" --store /nonexistent/x.db try plan-b.toml --serial TB3-0001 >"$work/out" 2>&1 </dev/null || got=$?
 same "exit for a store that can't be made" "$got" 5
