@@ -2,9 +2,11 @@
 
 #include <fmt/format.h>
 
+#include <algorithm>
+#include <limits>
 #include <map>
 #include <set>
-#include <unordered_map>
+#include <unordered_set>
 #include <utility>
 
 #include "db/bodies.hpp"
@@ -23,11 +25,9 @@ class Audit {
  public:
   explicit Audit(Database& database) : db_(database), bodies_(database) {}
   AuditReport run();
+  AuditReport run_recent(const std::string& station, std::int64_t last);
 
  private:
-  struct Seen {
-    bool ended{false};
-  };
   struct Link {
     std::string station, uuid;  ///< of the station
     JournalRow row;
@@ -42,10 +42,18 @@ class Audit {
   void check_documents();
   void check_chains();
   void check_chain(Id station, const std::string& name, const std::string& uuid);
+  void check_silent(Id station, const std::string& name);
+  static Link link_of(const Query& q, const std::string& station, const std::string& uuid);
+  /// @return whether an epoch begins with it
+  bool check_hash(const Link& link, const Link* before);
   void check_link(const Link& link, const Link* before, Id station);
-  void check_begun(const Link& link, Id station);
-  void check_ended(const Link& link, Id station);
+  void check_begins(const Link& link, const Link* before);
+  void check_body(const Link& link, Id station);
+  void check_trial(const Link& link, Id station);
   void check_entered(const Link& link);
+  void check_epoch(const Link& link);
+  void check_archived(const Link& link);
+  void check_open(const std::string& serial, const std::string& uuid);
   void check_trials();
   void check_board(const std::string& serial, const std::vector<PastTrial>& trials, const std::vector<Id>& counts);
   void check_counts();
@@ -56,25 +64,14 @@ class Audit {
   Database& db_;
   Bodies bodies_;
   AuditReport report_;
-  std::unordered_map<Id, Seen> trials_;
+  std::unordered_set<Id> trials_;  ///< with a record
   std::map<std::string, Id> entry_ids_;
   std::map<Id, Bodies::Entry> entries_;
+  std::map<Id, Sha256> entry_hashes_;
   std::set<Id> entries_seen_;
   bool unreadable_{false};
-  std::int64_t readings_{0}, orders_{0}, builds_{0}, reels_{0}, feeds_{0};
+  std::int64_t readings_{0}, epochs_{0}, archives_{0}, orders_{0}, builds_{0}, reels_{0}, feeds_{0};
 };
-
-std::string record_word(std::int64_t kind) {
-  switch (static_cast<RecordKind>(kind)) {
-    case RecordKind::trial_begun:
-      return "trial begun";
-    case RecordKind::trial_ended:
-      return "trial ended";
-    case RecordKind::list_entered:
-      return "list entered";
-  }
-  return "record of an unknown kind";
-}
 
 /// Once the store can't be read any further, what is missing is no news.
 void Audit::add(Difference difference) {
@@ -97,6 +94,28 @@ AuditReport Audit::run() {
   check_trials();
   check_counts();
   check_meta();
+  if (db_.failed()) differs({});
+  return std::move(report_);
+}
+
+/// Links and trials only: a list's body is read whole.
+AuditReport Audit::run_recent(const std::string& station, std::int64_t last) {
+  Query q = db_.query("SELECT id, uuid FROM station WHERE name = ?", station);
+  if (!q.next()) return std::move(report_);
+  std::vector<Link> links;
+  {
+    Query rows = db_.query(
+        "SELECT epoch, seq, kind, uuid, at_us, body_sha256, hash FROM journal WHERE station = ? "
+        "ORDER BY epoch DESC, seq DESC LIMIT ?",
+        q.integer(0), last + 1);
+    while (rows.next()) links.push_back(link_of(rows, station, q.text(1)));
+  }
+  std::reverse(links.begin(), links.end());
+  for (std::size_t i = 0; i < links.size(); ++i) {
+    if (i == 0 && static_cast<std::int64_t>(links.size()) > last) continue;  // only its hash is needed
+    check_hash(links[i], i == 0 ? nullptr : &links[i - 1]);
+    if (links[i].row.kind == static_cast<int>(RecordKind::trial)) check_trial(links[i], q.integer(0));
+  }
   if (db_.failed()) differs({});
   return std::move(report_);
 }
@@ -138,7 +157,8 @@ void Audit::check_documents() {
 }
 
 void Audit::check_chains() {
-  entries_ = bodies_.entered(0);
+  entries_ = bodies_.entered(0, std::numeric_limits<Id>::max(),
+                             [&](Id id, std::string_view bytes) { entry_hashes_[id].add(bytes); });
   {
     Query q = db_.query("SELECT id, uuid FROM entered");
     while (q.next()) entry_ids_[q.text(1)] = q.integer(0);
@@ -147,65 +167,107 @@ void Audit::check_chains() {
   while (q.next()) check_chain(q.integer(0), q.text(1), q.text(2));
 }
 
+/// A station without a record has a trial under way, its first.
+void Audit::check_silent(Id station, const std::string& name) {
+  if (!db_.first("SELECT 1 FROM trial WHERE station = ? AND state = 0", station))
+    differs(fmt::format("station {} has no record", name));
+}
+
+Audit::Link Audit::link_of(const Query& q, const std::string& station, const std::string& uuid) {
+  return {station, uuid, {q.integer(0), q.integer(1), q.integer(2), q.text(3), q.integer(4), q.text(5)}, q.text(6)};
+}
+
 void Audit::check_chain(Id station, const std::string& name, const std::string& uuid) {
-  Link link{name, uuid, {}, {}}, before;
+  Link link, before;
   bool first = true;
   Query q = db_.query(
       "SELECT epoch, seq, kind, uuid, at_us, body_sha256, hash FROM journal WHERE station = ? ORDER BY epoch, seq",
       station);
   while (q.next()) {
-    link.row = {q.integer(0), q.integer(1), q.integer(2), q.text(3), q.integer(4), q.text(5)};
-    link.hash = q.text(6);
+    link = link_of(q, name, uuid);
     check_link(link, first ? nullptr : &before, station);
     before = link;
     first = false;
     ++report_.records;
   }
-  if (first) return differs(fmt::format("station {} has no record", name));
+  if (first) return check_silent(station, name);
   report_.heads.push_back({name, before.row.epoch, before.row.seq, before.row.at_us, before.hash});
 }
 
-void Audit::check_link(const Link& link, const Link* before, Id station) {
+bool Audit::check_hash(const Link& link, const Link* before) {
   const bool begins = before == nullptr || before->row.epoch != link.row.epoch;
   const std::int64_t due = begins ? 1 : before->row.seq + 1;
   if (link.row.seq != due) differs(fmt::format("record {} is missing before it", due), link, {});
   const std::string start = chain_start();
   if (record_hash(begins ? start : before->hash, link.uuid, link.row) != link.hash)
     differs("its hash does not follow from the record and the hash before it", link, {});
+  return begins;
+}
+
+void Audit::check_link(const Link& link, const Link* before, Id station) {
+  const bool begins = check_hash(link, before);
   if (before != nullptr && link.row.at_us < before->row.at_us - 1'000'000) ++report_.steps_back;
+  if (begins) check_begins(link, before);
+  check_body(link, station);
+}
+
+/// A later epoch begins with a record that names where the one before it ended. That one may lie elsewhere: in the
+/// store that was damaged, or in the copy of an older layout.
+void Audit::check_begins(const Link& link, const Link* before) {
+  if (link.row.epoch == 1 && before == nullptr) return;
+  Query q = db_.query("SELECT last_epoch, last_seq, last_hash FROM epoch_begun WHERE uuid = ?", Blob{link.row.uuid});
+  if (link.row.kind != static_cast<int>(RecordKind::epoch_begun) || !q.next())
+    return differs("an epoch begins without a record of its own", link, {});
+  if (before == nullptr) return;
+  if (q.integer(0) != before->row.epoch || q.integer(1) != before->row.seq || q.text(2) != before->hash)
+    differs("the epoch names another end of the epoch before it", link, {});
+}
+
+void Audit::check_body(const Link& link, Id station) {
   switch (static_cast<RecordKind>(link.row.kind)) {
-    case RecordKind::trial_begun:
-      return check_begun(link, station);
-    case RecordKind::trial_ended:
-      return check_ended(link, station);
+    case RecordKind::trial:
+      return check_trial(link, station);
     case RecordKind::list_entered:
       return check_entered(link);
+    case RecordKind::epoch_begun:
+      return check_epoch(link);
+    case RecordKind::readings_archived:
+      return check_archived(link);
   }
   differs("this program knows no such record", link, {});
 }
 
-void Audit::check_begun(const Link& link, Id station) {
-  const auto body = bodies_.begun(link.row.uuid);
-  if (!body) return differs("its trial is not in the store", link, {});
+void Audit::check_trial(const Link& link, Id station) {
+  const auto body = bodies_.trial(link.row.uuid, true);
   ++report_.trials;
-  if (!trials_.try_emplace(body->id).second) differs("the trial was begun before", link, body->serial);
-  if (body->sha256 != link.row.body_sha256 || body->station != station)
-    differs("the rows are not what was recorded", link, body->serial);
-  if (body->open && !body->pristine) differs("the trial's row has an end that was not recorded", link, body->serial);
-}
-
-void Audit::check_ended(const Link& link, Id station) {
-  const auto body = bodies_.ended(link.row.uuid, true);
   if (!body) return differs("its trial is not in the store", link, {});
   report_.findings += body->findings;
   readings_ += body->readings;
-  const auto seen = trials_.find(body->id);
-  if (seen == trials_.end()) differs("the trial was not begun before", link, body->serial);
-  if (seen != trials_.end() && std::exchange(seen->second.ended, true))
-    differs("the trial was ended before", link, body->serial);
-  if (body->sha256 != link.row.body_sha256 || body->station != station)
+  report_.archived += body->readings - (body->readings_kept ? 1 : 0);
+  if (!trials_.insert(body->id).second) differs("the trial was recorded before", link, body->serial);
+  if (body->sha256 != link.row.body_sha256 || body->station != station || body->state == TrialState::open)
     differs("the rows are not what was recorded", link, body->serial);
   if (!body->misfit.empty()) differs(body->misfit, link, body->serial);
+}
+
+void Audit::check_epoch(const Link& link) {
+  ++epochs_;
+  const auto body = bodies_.epoch_begun(link.row.uuid);
+  if (!body || sha256(*body) != link.row.body_sha256) differs("the rows are not what was recorded", link, {});
+}
+
+void Audit::check_archived(const Link& link) {
+  ++archives_;
+  const auto body = bodies_.archived(link.row.uuid);
+  if (!body || sha256(*body) != link.row.body_sha256) differs("the rows are not what was recorded", link, {});
+}
+
+/// A trial under way, or cut short and not yet recorded so: its row bears its own hash.
+void Audit::check_open(const std::string& serial, const std::string& uuid) {
+  ++report_.open;
+  const auto body = bodies_.trial(uuid);
+  if (!body || body->sha256 != body->mark || body->findings + body->readings > 0)
+    differs(fmt::format("the open trial of board {} is not as it was begun", serial));
 }
 
 void Audit::check_entered(const Link& link) {
@@ -216,7 +278,8 @@ void Audit::check_entered(const Link& link) {
   if (Query q = db_.query("SELECT name FROM entered WHERE id = ?", id->second); q.next()) name = q.text(0);
   if (!entries_seen_.insert(id->second).second) return differs("the list was entered before", link, name);
   const Bodies::Entry& entry = entries_[id->second];
-  if (entry.sha256 != link.row.body_sha256) differs("the rows are not what was recorded", link, name);
+  if (entry_hashes_[id->second].digest() != link.row.body_sha256)
+    differs("the rows are not what was recorded", link, name);
   orders_ += entry.orders;
   builds_ += entry.builds;
   reels_ += entry.reels;
@@ -230,7 +293,8 @@ void Audit::check_trials() {
   std::vector<PastTrial> trials;
   std::vector<Id> counts;
   Query q = db_.query(
-      "SELECT t.board, b.serial, t.id, t.state, t.judgement, t.counts, t.attempt FROM trial t INDEXED BY trial_board "
+      "SELECT t.board, b.serial, t.id, t.state, t.judgement, t.counts, t.attempt, t.uuid, t.mark IS NULL FROM trial t "
+      "INDEXED BY trial_board "
       "LEFT JOIN board b ON b.id = t.board ORDER BY t.board, t.id");
   while (q.next()) {
     if (q.integer(0) != board) {
@@ -242,12 +306,10 @@ void Audit::check_trials() {
     }
     trials.push_back({static_cast<Judgement>(q.integer(4)), false});
     counts.push_back(q.integer(5));
-    const auto seen = trials_.find(q.integer(2));
-    if (seen == trials_.end()) {
-      differs(fmt::format("a trial of board {} has no record", serial));
-    } else if (q.integer(3) != 0 && !seen->second.ended) {
-      differs(fmt::format("a trial of board {} has ended, and no record says so", serial));
-    }
+    const bool recorded = trials_.contains(q.integer(2)), open = q.integer(3) == 0;
+    if (!recorded && open) check_open(serial, q.text(7));
+    if (!recorded && !open) differs(fmt::format("a trial of board {} has no record", serial));
+    if (recorded && q.integer(8) == 0) differs(fmt::format("a trial of board {} bears a mark of being open", serial));
     if (q.integer(6) != static_cast<Id>(trials.size()))
       differs(fmt::format("trial {} of board {} stands as its attempt {}", trials.size(), serial, q.integer(6)));
   }
@@ -279,6 +341,8 @@ void Audit::check_counts() {
   count("SELECT count(*) FROM reading_blob", readings_, "trials' readings");
   count("SELECT count(*) FROM journal", report_.records, "records");
   count("SELECT count(*) FROM entered", report_.lists, "lists");
+  count("SELECT count(*) FROM epoch_begun", epochs_, "begins of an epoch");
+  count("SELECT count(*) FROM archived", archives_, "archives of readings");
   count("SELECT count(*) FROM product_order WHERE product IS NOT NULL OR entered IS NOT NULL", orders_, "products");
   count("SELECT count(*) FROM build", builds_, "build places");
   count("SELECT count(*) FROM reel", reels_, "reels");
@@ -303,6 +367,19 @@ void Audit::check_meta() {
 }
 
 }  // namespace
+
+/// "trial of TB3-0001 (station bench 1, epoch 1, record 12): the rows are not what was recorded"
+std::string sentence(const Difference& d) {
+  if (d.record.empty()) return d.what;
+  const std::string on = d.on.empty() ? "" : " of " + d.on;
+  return fmt::format("{}{} (station {}, epoch {}, record {}): {}", d.record, on, d.station, d.epoch, d.seq, d.what);
+}
+
+Result<AuditReport> audit_recent(Database& database, const std::string& station, std::int64_t last) {
+  Transaction reading(database, Transaction::Kind::read);
+  if (!database.first("SELECT count(*) FROM sqlite_schema") && database.failed()) return database.error();
+  return Audit(database).run_recent(station, last);
+}
 
 Result<AuditReport> audit(Database& database) {
   Transaction reading(database, Transaction::Kind::read);

@@ -5,7 +5,9 @@
 #include <algorithm>
 #include <cmath>
 #include <numeric>
+#include <tuple>
 
+#include "db/digest.hpp"
 #include "limits/judge.hpp"
 
 namespace jigwright {
@@ -13,6 +15,7 @@ namespace {
 
 /// Columns [from, to) of the row, each by its type and value.
 void add_columns(Canonical& body, const Query& q, int from, int to) {
+  static_assert(static_cast<char>(Query::Type::blob) == static_cast<char>(ColumnType::blob));
   for (int i = from; i < to; ++i) {
     const auto type = q.type(i);
     body.mark(static_cast<char>(type));
@@ -30,118 +33,156 @@ void add_rows(Canonical& body, Query q, int columns) {
   }
 }
 
-std::string only(Query q, int columns) {
+Part part_of(const Canonical& body) {
+  return {body.bytes(), sha256(body.bytes())};
+}
+
+Part part_of(Query q, int columns) {
   Canonical body;
   add_rows(body, std::move(q), columns);
-  return sha256(body.bytes());
+  return part_of(body);
+}
+
+auto key_of(const Metric& m) {
+  return std::tuple(std::string_view(m.name.step), std::string_view(m.name.name), std::string_view(m.name.variant),
+                    symbol(m.unit), static_cast<int>(m.about));
+}
+
+/// The metric's five columns, without their number.
+void add_metric(Canonical& body, const Metric& m) {
+  body.text(m.name.step).text(m.name.name).text(m.name.variant).text(symbol(m.unit)).integer(static_cast<int>(m.about));
 }
 
 }  // namespace
 
+Part limits_part(const std::vector<std::pair<Metric, Limit>>& limits) {
+  std::vector<const std::pair<Metric, Limit>*> sorted;
+  for (const auto& row : limits) sorted.push_back(&row);
+  std::sort(sorted.begin(), sorted.end(),
+            [](const auto* a, const auto* b) { return key_of(a->first) < key_of(b->first); });
+  Canonical body;
+  for (const auto* row : sorted) {
+    const Limit& l = row->second;
+    body.mark(16);
+    add_metric(body, row->first);
+    body.maybe(l.specification.low).maybe(l.specification.high).real(l.nominal).integer(static_cast<int>(l.guard));
+    body.real(l.share).real(l.budget_U).real(l.budget_of_reading).real(l.width);
+    body.maybe(l.applied.low).maybe(l.applied.high).unless_empty(l.reason);
+  }
+  return part_of(body);
+}
+
+Part instruments_part(std::vector<InstrumentIdentity> instruments) {
+  const auto key = [](const InstrumentIdentity& i) {
+    return std::tie(i.instrument, i.maker, i.model, i.serial, i.firmware);
+  };
+  std::sort(instruments.begin(), instruments.end(), [&](const auto& a, const auto& b) { return key(a) < key(b); });
+  const auto same = [&](const auto& a, const auto& b) { return key(a) == key(b); };
+  instruments.erase(std::unique(instruments.begin(), instruments.end(), same), instruments.end());
+  Canonical body;
+  for (const InstrumentIdentity& i : instruments)
+    body.mark(5).text(i.instrument).text(i.maker).text(i.model).text(i.serial).text(i.firmware);
+  return part_of(body);
+}
+
+Part versions_part(std::vector<std::pair<std::string, int>> versions) {
+  std::sort(versions.begin(), versions.end());
+  Canonical body;
+  for (const auto& [kind, version] : versions) body.mark(2).text(kind).integer(version);
+  return part_of(body);
+}
+
 template <class Read>
-const std::string& Bodies::known(Known& held, Id id, Read read) {
+const Part& Bodies::known(Known& held, Id id, Read read) {
   const auto [at, fresh] = held.try_emplace(id);
   if (fresh) at->second = read();
   return at->second;
 }
 
-const std::string& Bodies::setup(Id id) {
+Part Bodies::setup_part(const std::string& plan, const std::string& program, const std::vector<Id>& documents) {
+  std::vector<std::string> rows;
+  for (Id id : documents) {
+    Canonical row;
+    add_rows(row, db_.query("SELECT sha256, kind, name FROM document WHERE id = ?", id), 3);
+    rows.push_back(row.bytes());
+  }
+  std::sort(rows.begin(), rows.end());
+  rows.erase(std::unique(rows.begin(), rows.end()), rows.end());
+  Canonical body;
+  body.mark(2).text(plan).text(program);
+  Part out{body.bytes(), {}};
+  for (const std::string& row : rows) out.bytes += row;
+  out.sha256 = sha256(out.bytes);
+  return out;
+}
+
+const Part& Bodies::setup(Id id) {
   return known(setups_, id, [&] {
     Canonical body;
-    add_rows(body, db_.query("SELECT sha256, plan, program FROM setup WHERE id = ?", id), 3);
+    add_rows(body, db_.query("SELECT plan, program FROM setup WHERE id = ?", id), 2);
     add_rows(body,
              db_.query("SELECT d.sha256, d.kind, d.name FROM setup_document s JOIN document d ON d.id = s.document "
                        "WHERE s.setup = ? ORDER BY d.sha256",
                        id),
              3);
-    return sha256(body.bytes());
+    return part_of(body);
   });
 }
 
-const std::string& Bodies::revision(Id id) {
+const Part& Bodies::revision(Id id) {
   return known(revisions_, id, [&] {
-    return only(db_.query("SELECT r.uuid, r.limit_set, r.number, d.sha256 FROM revision r LEFT JOIN document d "
-                          "ON d.id = r.document WHERE r.id = ?",
-                          id),
-                4);
+    return part_of(db_.query("SELECT r.uuid, r.limit_set, r.number, d.sha256 FROM revision r LEFT JOIN document d "
+                             "ON d.id = r.document WHERE r.id = ?",
+                             id),
+                   4);
   });
 }
 
-const std::string& Bodies::applied(Id id) {
+const Part& Bodies::applied(Id id) {
   return known(applied_, id, [&] {
-    Canonical body;
-    add_rows(body, db_.query("SELECT sha256 FROM applied WHERE id = ?", id), 1);
-    add_rows(body,
-             db_.query("SELECT m.step, m.name, m.variant, m.unit, m.about, l.spec_low, l.spec_high, l.nominal, "
-                       "l.guard, l.share, l.u_budget, l.u_of_reading, l.width, l.low, l.high, l.reason "
-                       "FROM applied_limit l JOIN metric m ON m.id = l.metric WHERE l.applied = ? "
-                       "ORDER BY m.step, m.name, m.variant, m.unit, m.about",
-                       id),
-             16);
-    return sha256(body.bytes());
+    return part_of(db_.query("SELECT m.step, m.name, m.variant, m.unit, m.about, l.spec_low, l.spec_high, l.nominal, "
+                             "l.guard, l.share, l.u_budget, l.u_of_reading, l.width, l.low, l.high, l.reason "
+                             "FROM applied_limit l JOIN metric m ON m.id = l.metric WHERE l.applied = ? "
+                             "ORDER BY m.step, m.name, m.variant, m.unit, m.about",
+                             id),
+                   16);
   });
 }
 
-const std::string& Bodies::equipment(Id id) {
+const Part& Bodies::equipment(Id id) {
   return known(equipment_, id, [&] {
-    Canonical body;
-    add_rows(body, db_.query("SELECT sha256 FROM equipment WHERE id = ?", id), 1);
-    add_rows(body,
-             db_.query("SELECT i.instrument, i.maker, i.model, i.serial, i.firmware FROM equipment_instrument e "
-                       "JOIN instrument i ON i.id = e.instrument WHERE e.equipment = ? "
-                       "ORDER BY i.instrument, i.maker, i.model, i.serial, i.firmware",
-                       id),
-             5);
-    return sha256(body.bytes());
+    return part_of(db_.query("SELECT i.instrument, i.maker, i.model, i.serial, i.firmware FROM equipment_instrument e "
+                             "JOIN instrument i ON i.id = e.instrument WHERE e.equipment = ? "
+                             "ORDER BY i.instrument, i.maker, i.model, i.serial, i.firmware",
+                             id),
+                   5);
   });
 }
 
-const std::string& Bodies::reduction(Id id) {
+const Part& Bodies::reduction(Id id) {
   return known(reductions_, id, [&] {
-    Canonical body;
-    add_rows(body, db_.query("SELECT sha256 FROM reduction WHERE id = ?", id), 1);
-    add_rows(body, db_.query("SELECT kind, version FROM reduction_step WHERE reduction = ? ORDER BY kind", id), 2);
-    return sha256(body.bytes());
+    return part_of(db_.query("SELECT kind, version FROM reduction_step WHERE reduction = ? ORDER BY kind", id), 2);
   });
 }
 
-/// The metric's content itself: short, and sorted by.
-const std::string& Bodies::metric(Id id) {
+/// Short, and named by its content rather than by a hash.
+const Part& Bodies::metric(Id id) {
   return known(metric_, id, [&] {
     Canonical body;
     add_rows(body, db_.query("SELECT step, name, variant, unit, about FROM metric WHERE id = ?", id), 5);
-    return body.bytes();
+    return Part{body.bytes(), {}};
   });
 }
 
-const std::string& Bodies::station(Id id) {
-  return known(stations_, id, [&] { return only(db_.query("SELECT uuid, name FROM station WHERE id = ?", id), 2); });
+const Part& Bodies::station(Id id) {
+  return known(stations_, id, [&] { return part_of(db_.query("SELECT uuid, name FROM station WHERE id = ?", id), 2); });
 }
 
-std::optional<TrialBody> Bodies::begun(std::string_view uuid) {
-  Query q = db_.query(
-      "SELECT t.id, t.station, t.state, t.setup, t.revision, "
-      "t.uuid, b.serial, t.nest, t.at_us, t.origin, t.attempt, t.depth, o.name, p.name, "
-      "t.state = 0 AND t.judgement = 2 AND t.void_reason = 'the program ended in mid-trial' AND t.nogo = 0 AND "
-      "coalesce(t.took_ms, t.applied, t.equipment, t.reduction, t.ambient_degC, t.unsafe, t.deciding_metric, "
-      "t.worst_metric, t.worst_margin) IS NULL "
-      "FROM trial t JOIN board b ON b.id = t.board LEFT JOIN product_order o ON o.id = t.ord "
-      "LEFT JOIN person p ON p.id = t.operator WHERE t.uuid = ?",
-      Blob{uuid});
-  if (!q.next()) return std::nullopt;
-  TrialBody out{q.integer(0), q.integer(1), q.text(6), q.integer(2) == 0, q.integer(14) != 0, {}, 0, 0, {}};
-  body_.clear();
-  add_columns(body_, q, 5, 14);
-  body_.add(station(out.station)).add(setup(q.integer(3))).add(revision(q.integer(4)));
-  out.sha256 = sha256(body_.bytes());
-  return out;
+std::optional<TrialBody> Bodies::trial(std::string_view uuid, bool check) {
+  return read(uuid, check, true);
 }
 
-std::optional<TrialBody> Bodies::ended(std::string_view uuid, bool check) {
-  return ended(uuid, check, true);
-}
-
-std::optional<TrialBody> Bodies::ended(std::string_view uuid, std::vector<Row> findings) {
+std::optional<TrialBody> Bodies::trial(std::string_view uuid, std::vector<Row> findings) {
   rows_ = std::move(findings);
   key_.clear();
   for (Row& row : rows_) {
@@ -151,34 +192,50 @@ std::optional<TrialBody> Bodies::ended(std::string_view uuid, std::vector<Row> f
       if (*number && **number == 0) *number = 0.0;
     }
   }
-  return ended(uuid, false, false);
+  return read(uuid, false, false);
 }
 
-std::optional<TrialBody> Bodies::ended(std::string_view uuid, bool check, bool read) {
+std::optional<TrialBody> Bodies::read(std::string_view uuid, bool check, bool findings) {
   Query q = db_.query(
-      "SELECT t.id, t.station, b.serial, t.state, t.applied, t.equipment, t.reduction, t.deciding_metric, "
-      "t.worst_metric, t.nogo, t.worst_margin, "
-      "t.uuid, t.state, t.took_ms, t.judgement, t.void_reason, t.ambient_degC, t.unsafe, t.nogo, t.worst_margin "
-      "FROM trial t JOIN board b ON b.id = t.board WHERE t.uuid = ?",
+      "SELECT t.id, t.station, b.serial, t.state, t.mark, t.setup, t.revision, t.applied, t.equipment, t.reduction, "
+      "t.deciding_metric, t.worst_metric, t.nogo, t.worst_margin, "
+      "t.uuid, b.serial, t.nest, t.at_us, t.origin, t.attempt, t.depth, o.name, p.name, t.state, t.took_ms, "
+      "t.judgement, t.void_reason, t.ambient_degC, t.unsafe, t.nogo, t.worst_margin "
+      "FROM trial t JOIN board b ON b.id = t.board LEFT JOIN product_order o ON o.id = t.ord "
+      "LEFT JOIN person p ON p.id = t.operator WHERE t.uuid = ?",
       Blob{uuid});
   if (!q.next()) return std::nullopt;
-  TrialBody out{q.integer(0), q.integer(1), q.text(2), q.integer(3) == 0, false, {}, 0, 0, {}};
-  if (read) read_findings(out.id);
+  TrialBody out;
+  out.id = q.integer(0);
+  out.station = q.integer(1);
+  out.serial = q.text(2);
+  out.state = static_cast<TrialState>(q.integer(3));
+  out.mark = q.text(4);
+  if (findings) read_findings(out.id);
   body_.clear();
-  add_columns(body_, q, 11, 20);
-  body_.add(applied(q.integer(4))).add(equipment(q.integer(5))).add(reduction(q.integer(6)));
-  for (int i : {7, 8}) body_.mark(q.null(i) ? 0 : 1).add(q.null(i) ? std::string() : metric(q.integer(i)));
+  parts_.clear();
+  add_columns(body_, q, 14, 31);
+  for (const Part* part : {&station(out.station), &setup(q.integer(5)), &revision(q.integer(6)), &applied(q.integer(7)),
+                           &equipment(q.integer(8)), &reduction(q.integer(9))})
+    name(*part);
+  for (int i : {10, 11}) body_.add(q.null(i) ? std::string() : metric(q.integer(i)).bytes);
   const Metrics& set = metrics();
-  body_.add(set.sha256).add(static_cast<std::int64_t>(rows_.size()));
+  name(set.part);
+  body_.add(static_cast<std::int64_t>(rows_.size()));
   for (std::size_t i : set.order) {
     const Row& row = rows_[i];
     body_.add(row.value).add(row.u).add(row.n).add(row.state).add(row.verdict);
   }
   out.findings = static_cast<std::int64_t>(rows_.size());
-  out.readings = add_readings(out.id);
+  add_readings(out);
   out.sha256 = sha256(body_.bytes());
-  if (check) out.misfit = misfit(q.maybe_integer(4), q.integer(9), q.maybe_real(10));
+  if (check) out.misfit = misfit(q.maybe_integer(7), q.integer(12), q.maybe_real(13));
   return out;
+}
+
+void Bodies::name(const Part& part) {
+  body_.add(part.sha256);
+  parts_.push_back(&part);
 }
 
 void Bodies::read_findings(Id trial) {
@@ -198,20 +255,19 @@ const Bodies::Metrics& Bodies::metrics() {
   out.order.resize(key_.size());
   std::iota(out.order.begin(), out.order.end(), std::size_t{0});
   std::sort(out.order.begin(), out.order.end(),
-            [&](std::size_t a, std::size_t b) { return metric(key_[a]) < metric(key_[b]); });
-  Canonical body;
-  for (std::size_t i : out.order) body.add(metric(key_[i]));
-  out.sha256 = sha256(body.bytes());
+            [&](std::size_t a, std::size_t b) { return metric(key_[a]).bytes < metric(key_[b]).bytes; });
+  for (std::size_t i : out.order) out.part.bytes += metric(key_[i]).bytes;
+  out.part.sha256 = sha256(out.part.bytes);
   return out;
 }
 
 /// By the hash of the bytes, so that readings may be archived away.
-std::int64_t Bodies::add_readings(Id trial) {
-  Query q = db_.query("SELECT format, body FROM reading_blob WHERE trial = ?", trial);
-  if (!q.next()) return 0;
-  add_columns(body_, q, 0, 1);
-  body_.add(sha256(q.view(1)));
-  return 1;
+void Bodies::add_readings(TrialBody& trial) {
+  Query q = db_.query("SELECT format, body, sha256 FROM reading_blob WHERE trial = ?", trial.id);
+  if (!q.next()) return;
+  trial.readings = 1;
+  trial.readings_kept = !q.null(1);
+  body_.integer(q.integer(0)).add(trial.readings_kept ? sha256(q.view(1)) : q.text(2));
 }
 
 const std::vector<Bodies::Limited>& Bodies::limits(Id applied) {
@@ -248,53 +304,73 @@ std::string Bodies::misfit(const std::optional<Id>& applied, std::int64_t nogo, 
   return {};
 }
 
-std::map<std::int64_t, Bodies::Entry> Bodies::entered(std::int64_t from_id) {
+std::map<Bodies::Id, Bodies::Entry> Bodies::entered(Id first, Id last, const Sink& sink) {
   std::map<Id, Entry> out;
-  std::map<Id, Sha256> hashes;
+  Canonical row;
   auto take = [&](Query q, char table, int columns, std::int64_t Entry::*count) {
     while (q.next()) {
       const auto entry = out.find(q.integer(0));
       if (entry == out.end()) continue;
-      body_.clear();
-      body_.mark(table);
-      add_columns(body_, q, 1, 1 + columns);
-      hashes[entry->first].add(body_.bytes());
+      row.clear();
+      row.mark(table);
+      add_columns(row, q, 1, 1 + columns);
+      sink(entry->first, row.bytes());
       if (count != nullptr) ++(entry->second.*count);
     }
   };
   {
-    Query q = db_.query("SELECT id FROM entered WHERE id >= ?", from_id);
+    Query q = db_.query("SELECT id FROM entered WHERE id BETWEEN ? AND ?", first, last);
     while (q.next()) out.try_emplace(q.integer(0));
   }
-  take(db_.query("SELECT id, uuid, kind, name, who FROM entered WHERE id >= ?", from_id), 'e', 4, nullptr);
+  take(db_.query("SELECT id, uuid, kind, name, who FROM entered WHERE id BETWEEN ? AND ?", first, last), 'e', 4,
+       nullptr);
   take(db_.query("SELECT entered, name, product FROM product_order INDEXED BY product_order_entered "
-                 "WHERE entered >= ? ORDER BY name",
-                 from_id),
+                 "WHERE entered BETWEEN ? AND ? ORDER BY name",
+                 first, last),
        'o', 2, &Entry::orders);
   take(db_.query("SELECT d.entered, o.name, d.build_no, b.serial, d.panel FROM build d INDEXED BY build_entered "
                  "CROSS JOIN product_order o ON o.id = d.ord CROSS JOIN board b ON b.id = d.board "
-                 "WHERE d.entered >= ? ORDER BY o.name, d.build_no",
-                 from_id),
+                 "WHERE d.entered BETWEEN ? AND ? ORDER BY o.name, d.build_no",
+                 first, last),
        'b', 4, &Entry::builds);
   take(db_.query("SELECT r.entered, r.name, l.maker, l.part, l.lot, r.date_code, r.distributor, r.rereeled, "
                  "r.quantity, r.marking FROM reel r INDEXED BY reel_entered CROSS JOIN lot l ON l.id = r.lot "
-                 "WHERE r.entered >= ? ORDER BY r.name",
-                 from_id),
+                 "WHERE r.entered BETWEEN ? AND ? ORDER BY r.name",
+                 first, last),
        'r', 9, &Entry::reels);
   take(db_.query("SELECT f.entered, f.uuid, o.name, f.designator, r.name, f.poss_from, f.cert_from, f.cert_to, "
                  "f.poss_to, f.repair, f.since_us, f.known_us FROM feed f INDEXED BY feed_entered "
                  "CROSS JOIN product_order o ON o.id = f.ord CROSS JOIN reel r ON r.id = f.reel "
-                 "WHERE f.entered >= ? ORDER BY f.uuid",
-                 from_id),
+                 "WHERE f.entered BETWEEN ? AND ? ORDER BY f.uuid",
+                 first, last),
        'f', 11, &Entry::feeds);
-  for (auto& [id, hash] : hashes) out[id].sha256 = hash.digest();
   return out;
+}
+
+std::optional<std::string> Bodies::only(Query q, int columns) {
+  if (!q.next()) return std::nullopt;
+  Canonical body;
+  add_columns(body, q, 0, columns);
+  return body.bytes();
+}
+
+std::optional<std::string> Bodies::epoch_begun(std::string_view uuid) {
+  return only(db_.query("SELECT uuid, reason, who, last_epoch, last_seq, last_hash FROM epoch_begun WHERE uuid = ?",
+                        Blob{uuid}),
+              6);
+}
+
+std::optional<std::string> Bodies::archived(std::string_view uuid) {
+  return only(
+      db_.query("SELECT uuid, who, before_us, trials, bytes, name, sha256 FROM archived WHERE uuid = ?", Blob{uuid}),
+      7);
 }
 
 void Bodies::forget() {
   for (Known* held : {&setups_, &revisions_, &applied_, &equipment_, &reductions_, &metric_, &stations_}) held->clear();
   metrics_.clear();
   limits_.clear();
+  parts_.clear();
 }
 
 }  // namespace jigwright

@@ -2,9 +2,6 @@
 
 #include <sodium.h>
 
-#include <bit>
-#include <cmath>
-
 namespace jigwright {
 
 std::string sha256(std::string_view bytes) {
@@ -40,31 +37,6 @@ std::string hex(std::string_view bytes) {
     out += digits[static_cast<unsigned char>(c) & 15];
   }
   return out;
-}
-
-void Canonical::eight(std::uint64_t bits) {
-  char low_first[8];
-  for (int i = 0; i < 8; ++i) low_first[i] = static_cast<char>(bits >> (8 * i));
-  bytes_.append(low_first, 8);
-}
-
-Canonical& Canonical::add(std::string_view text) {
-  eight(text.size());
-  bytes_ += text;
-  return *this;
-}
-Canonical& Canonical::add(std::int64_t number) {
-  eight(static_cast<std::uint64_t>(number));
-  return *this;
-}
-Canonical& Canonical::add(double number) {
-  eight(std::isnan(number) ? 0x7ff8000000000000u : std::bit_cast<std::uint64_t>(number));
-  return *this;
-}
-Canonical& Canonical::add(std::optional<double> maybe) {
-  bytes_ += maybe ? '\1' : '\0';
-  if (maybe) add(*maybe);
-  return *this;
 }
 
 }  // namespace jigwright

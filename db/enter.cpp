@@ -10,7 +10,6 @@
 #include <unordered_set>
 
 #include "base/nearest.hpp"
-#include "db/bodies.hpp"
 #include "db/journal.hpp"
 #include "db/lists.hpp"
 #include "db/names.hpp"
@@ -491,11 +490,7 @@ Id Entering::entry(const SourceRegion& region, const char* kind) {
 void Entering::write_journal(Id station, std::int64_t now_us) {
   Id first = std::numeric_limits<Id>::max();
   for (const auto& [file, id] : entries_) first = std::min(first, id);
-  for (const auto& [id, body] : Bodies(db_).entered(first)) {
-    std::string uuid;
-    if (Query q = db_.query("SELECT uuid FROM entered WHERE id = ?", id); q.next()) uuid = q.text(0);
-    append_record(db_, station, RecordKind::list_entered, uuid, now_us, body.sha256);
-  }
+  append_lists(db_, station, first, std::numeric_limits<Id>::max(), now_us);
 }
 
 Id Entering::order_id(const std::string& name) {

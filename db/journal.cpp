@@ -1,7 +1,10 @@
 #include "db/journal.hpp"
 
 #include <algorithm>
+#include <map>
 
+#include "db/bodies.hpp"
+#include "db/canonical.hpp"
 #include "db/digest.hpp"
 #include "db/questions.hpp"
 #include "db/sqlite.hpp"
@@ -14,18 +17,26 @@ struct Dated {
   LogLine line;
 };
 
-std::string what_of(const Query& q) {
-  const auto kind = static_cast<RecordKind>(q.integer(4));
-  if (kind == RecordKind::trial_begun) return "trial begun";
-  if (kind == RecordKind::trial_ended) return "trial ended: " + std::string(word(static_cast<Judgement>(q.integer(7))));
-  return q.text(8) + " entered";
+/// Columns from `at`: kind, judgement, list's kind, epoch's reason, archived trials.
+std::string what_of(const Query& q, int at) {
+  switch (static_cast<RecordKind>(q.integer(at))) {
+    case RecordKind::trial:
+      return "trial: " + std::string(word(static_cast<Judgement>(q.integer(at + 1))));
+    case RecordKind::list_entered:
+      return q.text(at + 2) + " entered";
+    case RecordKind::epoch_begun:
+      return "epoch begun: " + q.text(at + 3);
+    case RecordKind::readings_archived:
+      return "raw readings of " + q.text(at + 4) + " trials archived";
+  }
+  return record_word(q.integer(at));
 }
 
-/// Columns: station, epoch, seq, at_us, kind, who, on, judgement, list's kind; newest first.
+/// Columns: station, epoch, seq, at_us, who, on, then what_of's; newest first.
 std::vector<Dated> lines_of(Query q) {
   std::vector<Dated> out;
   while (q.next())
-    out.push_back({0, {q.text(0), q.integer(1), q.integer(2), q.integer(3), q.text(5), what_of(q), q.text(6)}});
+    out.push_back({0, {q.text(0), q.integer(1), q.integer(2), q.integer(3), q.text(4), what_of(q, 6), q.text(5)}});
   std::reverse(out.begin(), out.end());
   std::int64_t highest = 0;
   for (Dated& d : out) d.rises_us = highest = std::max(highest, d.line.at_us);
@@ -34,23 +45,25 @@ std::vector<Dated> lines_of(Query q) {
 
 std::vector<Dated> lines_of_station(Database& database, std::int64_t station, std::int64_t last) {
   return lines_of(database.query(
-      "SELECT s.name, j.epoch, j.seq, j.at_us, j.kind, coalesce(p.name, e.who), coalesce(b.serial, e.name), "
-      "t.judgement, e.kind FROM journal j JOIN station s ON s.id = j.station LEFT JOIN trial t ON t.uuid = j.uuid "
-      "LEFT JOIN board b ON b.id = t.board LEFT JOIN person p ON p.id = t.operator "
-      "LEFT JOIN entered e ON e.uuid = j.uuid WHERE j.station = ? ORDER BY j.epoch DESC, j.seq DESC LIMIT ?",
+      "SELECT s.name, j.epoch, j.seq, j.at_us, coalesce(p.name, e.who, n.who, a.who), coalesce(b.serial, e.name, "
+      "a.name), j.kind, t.judgement, e.kind, n.reason, a.trials FROM journal j JOIN station s ON s.id = j.station "
+      "LEFT JOIN trial t ON t.uuid = j.uuid LEFT JOIN board b ON b.id = t.board LEFT JOIN person p ON "
+      "p.id = t.operator LEFT JOIN entered e ON e.uuid = j.uuid LEFT JOIN epoch_begun n ON n.uuid = j.uuid "
+      "LEFT JOIN archived a ON a.uuid = j.uuid WHERE j.station = ? ORDER BY j.epoch DESC, j.seq DESC LIMIT ?",
       station, last));
 }
 
 std::vector<Dated> lines_of_serial(Database& database, std::int64_t station, const std::string& serial,
                                    std::int64_t last) {
   return lines_of(database.query(
-      "SELECT s.name, j.epoch, j.seq, j.at_us, j.kind, coalesce(p.name, e.who), coalesce(b.serial, e.name), "
-      "t.judgement, e.kind FROM journal j JOIN station s ON s.id = j.station LEFT JOIN trial t ON t.uuid = j.uuid "
-      "LEFT JOIN board b ON b.id = t.board LEFT JOIN person p ON p.id = t.operator "
-      "LEFT JOIN entered e ON e.uuid = j.uuid WHERE j.station = ? AND j.uuid IN "
-      "(SELECT n.uuid FROM board a JOIN trial n ON n.board = a.id WHERE a.serial = ? UNION ALL "
-      "SELECT l.uuid FROM board a JOIN build d ON d.board = a.id JOIN entered l ON l.id = d.entered "
-      "WHERE a.serial = ?) ORDER BY j.epoch DESC, j.seq DESC LIMIT ?",
+      "SELECT s.name, j.epoch, j.seq, j.at_us, coalesce(p.name, e.who, n.who, a.who), coalesce(b.serial, e.name, "
+      "a.name), j.kind, t.judgement, e.kind, n.reason, a.trials FROM journal j JOIN station s ON s.id = j.station "
+      "LEFT JOIN trial t ON t.uuid = j.uuid LEFT JOIN board b ON b.id = t.board LEFT JOIN person p ON "
+      "p.id = t.operator LEFT JOIN entered e ON e.uuid = j.uuid LEFT JOIN epoch_begun n ON n.uuid = j.uuid "
+      "LEFT JOIN archived a ON a.uuid = j.uuid WHERE j.station = ? AND j.uuid IN "
+      "(SELECT k.uuid FROM board c JOIN trial k ON k.board = c.id WHERE c.serial = ? UNION ALL "
+      "SELECT l.uuid FROM board c JOIN build d ON d.board = c.id JOIN entered l ON l.id = d.entered "
+      "WHERE c.serial = ?) ORDER BY j.epoch DESC, j.seq DESC LIMIT ?",
       station, serial, serial, last));
 }
 
@@ -65,6 +78,20 @@ std::vector<LogLine> merged(std::vector<Dated> lines, std::int64_t last) {
 
 }  // namespace
 
+std::string record_word(std::int64_t kind) {
+  switch (static_cast<RecordKind>(kind)) {
+    case RecordKind::list_entered:
+      return "list entered";
+    case RecordKind::trial:
+      return "trial";
+    case RecordKind::epoch_begun:
+      return "epoch begun";
+    case RecordKind::readings_archived:
+      return "raw readings archived";
+  }
+  return "record of an unknown kind";
+}
+
 std::string chain_start() {
   return std::string(32, '\0');
 }
@@ -75,23 +102,57 @@ std::string record_hash(std::string_view before, std::string_view station_uuid, 
   return sha256(record.add(row.body_sha256).bytes());
 }
 
+namespace {
+
+void add(Database& database, std::int64_t station, const std::string& before, const JournalRow& row) {
+  std::string uuid;
+  {
+    Query at = database.query("SELECT uuid FROM station WHERE id = ?", station);
+    if (at.next()) uuid = at.text(0);
+  }
+  database.run("INSERT INTO journal VALUES(?, ?, ?, ?, ?, ?, ?, ?)", station, row.epoch, row.seq, row.kind,
+               Blob{row.uuid}, row.at_us, Blob{row.body_sha256}, Blob{record_hash(before, uuid, row)});
+}
+
+}  // namespace
+
+JournalHead journal_head(Database& database, std::int64_t station) {
+  JournalHead out{1, 0, chain_start()};
+  Query q = database.query(
+      "SELECT epoch, seq, hash FROM journal WHERE station = ? ORDER BY epoch DESC, seq DESC LIMIT 1", station);
+  if (q.next()) out = {q.integer(0), q.integer(1), q.text(2)};
+  return out;
+}
+
 void append_record(Database& database, std::int64_t station, RecordKind kind, std::string_view uuid, std::int64_t at_us,
                    std::string_view body_sha256) {
-  JournalRow row{1, 1, static_cast<int>(kind), std::string(uuid), at_us, std::string(body_sha256)};
-  std::string before = chain_start(), station_uuid;
-  {
-    Query head = database.query(
-        "SELECT epoch, seq, hash FROM journal WHERE station = ? ORDER BY epoch DESC, seq DESC LIMIT 1", station);
-    if (head.next()) {
-      row.epoch = head.integer(0);
-      row.seq = head.integer(1) + 1;
-      before = head.text(2);
-    }
-    Query at = database.query("SELECT uuid FROM station WHERE id = ?", station);
-    if (at.next()) station_uuid = at.text(0);
+  const JournalHead head = journal_head(database, station);
+  add(database, station, head.hash,
+      {head.epoch, head.seq + 1, static_cast<int>(kind), std::string(uuid), at_us, std::string(body_sha256)});
+}
+
+void append_lists(Database& database, std::int64_t station, std::int64_t first, std::int64_t last, std::int64_t at_us) {
+  std::map<std::int64_t, Sha256> bodies;
+  Bodies(database).entered(first, last, [&](std::int64_t id, std::string_view bytes) { bodies[id].add(bytes); });
+  for (auto& [id, body] : bodies) {
+    std::string uuid;
+    if (Query q = database.query("SELECT uuid FROM entered WHERE id = ?", id); q.next()) uuid = q.text(0);
+    append_record(database, station, RecordKind::list_entered, uuid, at_us, body.digest());
   }
-  database.run("INSERT INTO journal VALUES(?, ?, ?, ?, ?, ?, ?, ?)", station, row.epoch, row.seq, row.kind, Blob{uuid},
-               at_us, Blob{body_sha256}, Blob{record_hash(before, station_uuid, row)});
+}
+
+void begin_epoch(Database& database, UuidMaker& uuids, std::int64_t station, const std::string& reason,
+                 const std::string& who, std::int64_t at_us) {
+  const JournalHead head = journal_head(database, station);
+  if (head.seq == 0) return;
+  const Uuid uuid = uuids.next(at_us / 1000);
+  database.run("INSERT INTO epoch_begun(uuid, reason, who, last_epoch, last_seq, last_hash) VALUES(?, ?, ?, ?, ?, ?)",
+               Blob{bytes(uuid)}, reason, who.empty() ? std::nullopt : std::optional(who), head.epoch, head.seq,
+               Blob{head.hash});
+  const auto body = Bodies(database).epoch_begun(bytes(uuid));
+  if (!body || database.failed()) return;
+  add(database, station, chain_start(),
+      {head.epoch + 1, 1, static_cast<int>(RecordKind::epoch_begun), std::string(bytes(uuid)), at_us, sha256(*body)});
 }
 
 std::int64_t station_row(Database& database, UuidMaker& uuids, const std::string& name, std::int64_t at_us) {

@@ -16,13 +16,16 @@ namespace jigwright {
 
 class Database;
 
-/// Stored; never renumbered.
-enum class RecordKind : std::uint8_t { trial_begun = 1, trial_ended = 2, list_entered = 3 };
+/// Stored; never renumbered. 1 and 2 were layout 2's begin and end of a trial.
+enum class RecordKind : std::uint8_t { list_entered = 3, trial = 4, epoch_begun = 5, readings_archived = 6 };
+
+/// "trial", "list entered"
+std::string record_word(std::int64_t kind);
 
 struct JournalRow {
   std::int64_t epoch{1}, seq{1};
   std::int64_t kind{};
-  std::string uuid;  ///< bytes; of the trial, or of the row in `entered`
+  std::string uuid;  ///< bytes; of the trial, or of the row in `entered`, `epoch_begun`, `archived`
   std::int64_t at_us{};
   std::string body_sha256;  ///< 32 bytes
 };
@@ -39,6 +42,21 @@ std::string record_hash(std::string_view before, std::string_view station_uuid, 
 void append_record(Database& database, std::int64_t station, RecordKind kind, std::string_view uuid, std::int64_t at_us,
                    std::string_view body_sha256);
 
+/// A record for each row of `entered` in first .. last.
+void append_lists(Database& database, std::int64_t station, std::int64_t first, std::int64_t last, std::int64_t at_us);
+
+/// The end of the station's chain, its highest epoch's; seq 0 and chain_start() where there is none.
+struct JournalHead {
+  std::int64_t epoch{1}, seq{0};
+  std::string hash;
+};
+JournalHead journal_head(Database& database, std::int64_t station);
+
+/// Begins the station's next epoch: its first record names the head before it. Where the station has no record yet,
+/// nothing is done: its first epoch begins by itself.
+void begin_epoch(Database& database, UuidMaker& uuids, std::int64_t station, const std::string& reason,
+                 const std::string& who, std::int64_t at_us);
+
 /// Row of the station's name, made when it is new.
 std::int64_t station_row(Database& database, UuidMaker& uuids, const std::string& name, std::int64_t at_us);
 
@@ -48,7 +66,7 @@ struct LogLine {
   std::int64_t epoch{}, seq{};
   std::int64_t at_us{};
   std::string who;   ///< empty = not known
-  std::string what;  ///< "trial begun", "trial ended: NO-GO", "boards entered"
+  std::string what;  ///< "trial: NO-GO", "boards entered"
   std::string on;    ///< serial, or the file's name
 };
 

@@ -4,6 +4,7 @@
 #include <sqlite3.h>
 #include <sys/stat.h>
 
+#include <limits>
 #include <vector>
 
 #include "db/bodies.hpp"
@@ -13,6 +14,8 @@
 
 namespace jigwright {
 namespace {
+
+using Id = std::int64_t;
 
 struct Closing {
   void operator()(sqlite3* handle) const { sqlite3_close_v2(handle); }
@@ -61,37 +64,86 @@ Result<Done> copy(Database& database, const std::string& to) {
   return Done{};
 }
 
-void journal_trials(Database& database) {
+/// Sets that many trials share are found by the hash of their content; before layout 3 integer keys were in it.
+void hash_by_content(Database& database) {
   Bodies bodies(database);
-  Query q = database.query("SELECT uuid, station, at_us, state, took_ms FROM trial ORDER BY id");
-  while (q.next()) {
-    const std::string uuid = q.text(0);
-    const auto begun = bodies.begun(uuid);
-    append_record(database, q.integer(1), RecordKind::trial_begun, uuid, q.integer(2), begun ? begun->sha256 : "");
-    if (q.integer(3) == 0) continue;
-    const auto ended = bodies.ended(uuid);
-    append_record(database, q.integer(1), RecordKind::trial_ended, uuid, q.integer(2) + q.integer(4) * 1000,
-                  ended ? ended->sha256 : "");
+  const auto rehash = [&](Sql ids, Sql update, const Part& (Bodies::*part)(Id)) {
+    std::vector<Id> all;
+    {
+      Query q = database.query(ids);
+      while (q.next()) all.push_back(q.integer(0));
+    }
+    for (Id id : all) database.run(update, Blob{(bodies.*part)(id).sha256}, id);
+  };
+  rehash("SELECT id FROM setup", "UPDATE setup SET sha256 = ? WHERE id = ?", &Bodies::setup);
+  rehash("SELECT id FROM applied", "UPDATE applied SET sha256 = ? WHERE id = ?", &Bodies::applied);
+  rehash("SELECT id FROM equipment", "UPDATE equipment SET sha256 = ? WHERE id = ?", &Bodies::equipment);
+  rehash("SELECT id FROM reduction", "UPDATE reduction SET sha256 = ? WHERE id = ?", &Bodies::reduction);
+}
+
+void record_trial(Database& database, Bodies& bodies, Id station, const std::string& uuid, std::int64_t at_us) {
+  if (const auto body = bodies.trial(uuid); body && !database.failed())
+    append_record(database, station, RecordKind::trial, uuid, at_us, body->sha256);
+}
+
+struct OldRecord {
+  Id station{};
+  std::int64_t kind{};
+  std::string uuid;
+  std::int64_t at_us{};
+  std::string body_sha256;
+};
+
+/// Each chain goes on in a new epoch, which names the old one's end, with one record a trial; the old epoch's records
+/// stay in the copy.
+void carry_chains_of_layout_2(Database& database, UuidMaker& uuids, std::int64_t now_us) {
+  std::vector<OldRecord> old;
+  std::vector<Id> stations;
+  {
+    Query q =
+        database.query("SELECT station, kind, uuid, at_us, body_sha256 FROM journal ORDER BY station, epoch, seq");
+    while (q.next()) {
+      old.push_back({q.integer(0), q.integer(1), q.text(2), q.integer(3), q.text(4)});
+      if (stations.empty() || stations.back() != old.back().station) stations.push_back(old.back().station);
+    }
+  }
+  for (Id station : stations)
+    begin_epoch(database, uuids, station, fmt::format("layout 2 brought to layout {}", layout_version), "", now_us);
+  database.run("DELETE FROM journal WHERE kind <> ?", static_cast<int>(RecordKind::epoch_begun));
+  Bodies bodies(database);
+  for (const OldRecord& r : old) {
+    const bool list = r.kind == static_cast<int>(RecordKind::list_entered);
+    const bool begun_only =
+        r.kind == 1 && database.first("SELECT 1 FROM trial WHERE uuid = ? AND state = 2", Blob{r.uuid}).has_value();
+    if (list) append_record(database, r.station, RecordKind::list_entered, r.uuid, r.at_us, r.body_sha256);
+    if (r.kind == 2 || begun_only) record_trial(database, bodies, r.station, r.uuid, r.at_us);
   }
 }
 
-void journal_lists(Database& database, UuidMaker& uuids, std::int64_t now_us) {
+void begin_chains_of_layout_1(Database& database, UuidMaker& uuids, std::int64_t now_us) {
+  Bodies bodies(database);
+  {
+    Query q = database.query("SELECT uuid, station, at_us, coalesce(took_ms, 0) FROM trial ORDER BY id");
+    while (q.next()) record_trial(database, bodies, q.integer(1), q.text(0), q.integer(2) + q.integer(3) * 1000);
+  }
+  const auto first = database.first("SELECT id FROM station ORDER BY id LIMIT 1");
+  const Id station = first ? *first : station_row(database, uuids, "station", now_us);
+  append_lists(database, station, 0, std::numeric_limits<Id>::max(), now_us);
+}
+
+/// Layout 1 did not say which list brought a row: all are one.
+void enter_lists_of_layout_1(Database& database, UuidMaker& uuids, std::int64_t now_us) {
   const auto held = database.first(
       "SELECT 1 FROM build UNION ALL SELECT 1 FROM reel UNION ALL SELECT 1 FROM feed UNION ALL "
       "SELECT 1 FROM product_order WHERE product IS NOT NULL LIMIT 1");
   if (!held) return;
   const Uuid uuid = uuids.next(now_us / 1000);
   database.run("INSERT INTO entered(uuid, kind, name) VALUES(?, 'lists', 'all lists of layout 1')", Blob{bytes(uuid)});
-  const std::int64_t id = database.last_id();
+  const Id id = database.last_id();
   database.run("UPDATE product_order SET entered = ? WHERE product IS NOT NULL", id);
   database.run("UPDATE build SET entered = ?", id);
   database.run("UPDATE reel SET entered = ?", id);
   database.run("UPDATE feed SET entered = ?", id);
-  const auto first = database.first("SELECT id FROM station ORDER BY id LIMIT 1");
-  const std::int64_t station = first ? *first : station_row(database, uuids, "station", now_us);
-  const auto bodies = Bodies(database).entered(id);
-  if (const auto body = bodies.find(id); body != bodies.end())
-    append_record(database, station, RecordKind::list_entered, bytes(uuid), now_us, body->second.sha256);
 }
 
 }  // namespace
@@ -104,9 +156,11 @@ Result<std::string> migrate(Database& database, UuidMaker& uuids, std::int64_t n
   const std::string to = free_path(database.path(), *layout);
   const auto copied = copy(database, to);
   if (!copied) return copied.error();
-  lay_out_2(database);
-  journal_trials(database);
-  journal_lists(database, uuids, now_us);
+  lay_out_after(database, *layout);
+  hash_by_content(database);
+  database.run("UPDATE trial SET state = 2 WHERE state = 0");
+  if (*layout == 1) enter_lists_of_layout_1(database, uuids, now_us);
+  *layout == 1 ? begin_chains_of_layout_1(database, uuids, now_us) : carry_chains_of_layout_2(database, uuids, now_us);
   const auto done = transaction.commit();
   if (!done) return done.error();
   return fmt::format("{} was brought from layout {} to layout {}; as it was, it lies in {}", database.path(), *layout,

@@ -6,7 +6,7 @@ namespace jigwright {
 namespace {
 
 // Integer keys never leave the file; uuids, names and serials do. Records are only added. What changes in place is
-// derived from them: trial.counts, and the columns of a trial that its end fills in.
+// derived from them: trial.counts, column_block, and the columns of a trial that its end fills in.
 constexpr const char* layout_1 = R"sql(
 CREATE TABLE meta(key TEXT PRIMARY KEY, value ANY NOT NULL) STRICT, WITHOUT ROWID;
 
@@ -182,6 +182,31 @@ CREATE INDEX reel_entered ON reel(entered);
 CREATE INDEX feed_entered ON feed(entered);
 )sql";
 
+// One record a trial instead of two. What layout 2 hashed by integer keys is hashed by content: migrate.cpp does so.
+constexpr const char* layout_3 = R"sql(
+-- While a trial runs: the hash of its row as begun; its record covers the row from then on. trial.state: 0 open,
+-- 1 ended, 2 cut short by the end of its program.
+ALTER TABLE trial ADD COLUMN mark BLOB;
+-- Readings that were archived away leave their hash.
+ALTER TABLE reading_blob RENAME TO reading_blob_2;
+CREATE TABLE reading_blob(
+  trial INTEGER PRIMARY KEY REFERENCES trial, format INTEGER NOT NULL, body BLOB, sha256 BLOB,
+  CHECK((body IS NULL) = (sha256 IS NOT NULL))) STRICT;
+INSERT INTO reading_blob SELECT trial, format, body, NULL FROM reading_blob_2;
+DROP TABLE reading_blob_2;
+-- journal.kind: 3 list entered, 4 trial, 5 epoch begun, 6 readings archived. Where the chain before an epoch ended.
+CREATE TABLE epoch_begun(
+  id INTEGER PRIMARY KEY, uuid BLOB NOT NULL UNIQUE, reason TEXT NOT NULL, who TEXT, last_epoch INTEGER,
+  last_seq INTEGER, last_hash BLOB) STRICT;
+CREATE TABLE archived(
+  id INTEGER PRIMARY KEY, uuid BLOB NOT NULL UNIQUE, who TEXT, before_us INTEGER NOT NULL, trials INTEGER NOT NULL,
+  bytes INTEGER NOT NULL, name TEXT NOT NULL, sha256 BLOB NOT NULL) STRICT;
+-- One metric's findings over 512 trials, ids 512 * stretch + 1 to 512 * stretch + 512: derived, see columns.hpp.
+CREATE TABLE column_block(
+  metric INTEGER NOT NULL REFERENCES metric, stretch INTEGER NOT NULL, body BLOB NOT NULL,
+  PRIMARY KEY(metric, stretch)) STRICT, WITHOUT ROWID;
+)sql";
+
 bool is_empty(Database& database) {
   return database.first("SELECT count(*) FROM sqlite_schema").value_or(1) == 0;
 }
@@ -229,11 +254,13 @@ void lay_out(Database& database) {
   database.script(layout_1);
   database.script(views);
   database.script(layout_2);
+  database.script(layout_3);
   mark_layout(database);
 }
 
-void lay_out_2(Database& database) {
-  database.script(layout_2);
+void lay_out_after(Database& database, std::int64_t layout) {
+  if (layout < 2) database.script(layout_2);
+  if (layout < 3) database.script(layout_3);
   mark_layout(database);
 }
 

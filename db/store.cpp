@@ -4,6 +4,7 @@
 
 #include <chrono>
 
+#include "db/audit.hpp"
 #include "db/free_space.hpp"
 #include "db/migrate.hpp"
 #include "db/schema.hpp"
@@ -63,7 +64,22 @@ Result<std::unique_ptr<Store>> Store::reopened(const std::string& path, StoreOpt
   return reader;
 }
 
+Result<Done> Store::drive(const std::string& station, std::int64_t now_us) {
+  if (driven_.contains(station)) return Done{};
+  auto lock = StationLock::take(database_->path(), station);
+  if (!lock) return lock.error();
+  const auto report = audit_recent(*database_, station);
+  if (!report) return report.error();
+  if (!report.value().whole())
+    return Error{Error::Kind::store, "the store is damaged: " + sentence(report.value().differences.front()),
+                 database_->path(), restore_advice};
+  if (const auto closed = writer_->close_cut_short(station, now_us); !closed) return closed.error();
+  driven_.emplace(station, std::move(lock.value()));
+  return Done{};
+}
+
 Result<OpenTrial> Store::begin_trial(const TrialStart& start) {
+  if (const auto driven = drive(start.station, start.at_us); !driven) return driven.error();
   if (const auto room = check_space(database_->path()); !room) return room.error();
   return writer_->begin(start);
 }

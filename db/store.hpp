@@ -2,11 +2,13 @@
 // orders, boards, reels and feeds, and answers questions. Owned by the program's main function; one thread at a time.
 // A process that only asks opens it for reading: its transactions are short and never block the line.
 #pragma once
+#include <map>
 #include <memory>
 #include <string>
 
 #include "db/enter.hpp"
 #include "db/questions.hpp"
+#include "db/station_lock.hpp"
 #include "db/trial_log.hpp"
 
 namespace jigwright {
@@ -32,6 +34,9 @@ class Store final : public TrialLog {
   /// What opening did that a person should know; empty = nothing.
   const std::string& notice() const { return notice_; }
 
+  /// The first of a station also takes it for this process, looks whether the end of its chain is as recorded, and
+  /// gives trials that were cut short their record. Error kind store: another program drives the station, the store is
+  /// damaged, its disk is nearly full.
   Result<OpenTrial> begin_trial(const TrialStart& start) override;
   Result<Done> finish_trial(const OpenTrial& open, const TrialEnd& end) override;
 
@@ -50,9 +55,11 @@ class Store final : public TrialLog {
 
  private:
   explicit Store(std::unique_ptr<Database> database);
+  Result<Done> drive(const std::string& station, std::int64_t now_us);
   static Result<std::unique_ptr<Store>> reopened(const std::string& path, StoreOptions options);
 
   std::string notice_;
+  std::map<std::string, StationLock> driven_;
   UuidMaker uuids_;
   std::unique_ptr<Database> database_;
   std::unique_ptr<TrialWriter> writer_;

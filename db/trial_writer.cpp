@@ -10,7 +10,16 @@
 namespace jigwright {
 namespace {
 
+/// Newest trials among which one that was cut short is looked for: no more, so that a start is quick in a large store.
+constexpr std::int64_t looked_through = 100'000;
 constexpr const char* killed = "the program ended in mid-trial";
+
+std::vector<std::pair<Metric, Limit>> limited(const std::vector<FindingRow>& rows) {
+  std::vector<std::pair<Metric, Limit>> out;
+  for (const FindingRow& row : rows)
+    if (row.limit) out.emplace_back(row.metric, *row.limit);
+  return out;
+}
 
 const char* origin_word(std::int64_t origin) {
   return origin == static_cast<int>(Origin::measured)    ? "measured"
@@ -52,7 +61,7 @@ Result<OpenTrial> TrialWriter::begin(const TrialStart& start) {
   open.uuid = uuids_.next(start.at_us / 1000);
   settle_setup(start);
   insert_open(start, open);
-  journal_begun(open, start.at_us);
+  mark(open);
   const auto done = transaction.commit();
   if (done) return open;
   forget();
@@ -112,10 +121,7 @@ TrialWriter::Id TrialWriter::document(const Document& d) {
 }
 
 TrialWriter::Id TrialWriter::setup(const TrialStart& start, const std::vector<Id>& documents) {
-  Canonical record;
-  record.add(start.plan).add(start.program);
-  for (Id id : documents) record.add(id);
-  const std::string digest = sha256(record.bytes());
+  const std::string digest = bodies_.setup_part(start.plan, start.program, documents).sha256;
   if (const auto id = db_.first("SELECT id FROM setup WHERE sha256 = ?", Blob{digest})) return *id;
   db_.run("INSERT INTO setup(sha256, plan, program) VALUES(?, ?, ?)", Blob{digest}, start.plan, start.program);
   const Id made = db_.last_id();
@@ -164,9 +170,10 @@ Result<Done> TrialWriter::finish(const OpenTrial& open, const TrialEnd& end) {
   }
   close(open, end, tally, applied(end.findings, metrics));
   std::vector<Bodies::Row> findings = insert_findings(open, end.findings, metrics);
-  db_.run("INSERT INTO reading_blob VALUES(?, ?, ?)", open.id, end.readings_format, Blob{end.readings});
+  db_.run("INSERT INTO reading_blob(trial, format, body) VALUES(?, ?, ?)", open.id, end.readings_format,
+          Blob{end.readings});
   settle_counts(db_.first("SELECT board FROM trial WHERE id = ?", open.id).value_or(0));
-  journal_ended(open, end, std::move(findings));
+  journal(open, end, std::move(findings));
   const auto done = transaction.commit();
   if (!done) forget();
   return done;
@@ -178,7 +185,8 @@ void TrialWriter::close(const OpenTrial& open, const TrialEnd& end, const Tally&
   const Id reduced = reduction(end.reduce_versions);
   const auto reason = outcome.judgement == Judgement::void_ ? unless_empty(outcome.void_reason) : std::nullopt;
   db_.run(
-      "UPDATE trial SET state = 1, took_ms = ?, judgement = ?, void_reason = ?, applied = ?, equipment = ?, "
+      "UPDATE trial SET state = 1, mark = NULL, took_ms = ?, judgement = ?, void_reason = ?, applied = ?, equipment = "
+      "?, "
       "reduction = ?, ambient_degC = ?, unsafe = ?, nogo = ?, deciding_metric = ?, worst_metric = ?, "
       "worst_margin = ? WHERE id = ? AND uuid = ? AND state = 0",
       end.took_ms, static_cast<int>(outcome.judgement), reason, applied, with, reduced, end.ambient_C,
@@ -234,19 +242,7 @@ TrialWriter::Id TrialWriter::applied(const std::vector<FindingRow>& rows, const 
 }
 
 TrialWriter::Id TrialWriter::settle_applied(const std::vector<FindingRow>& rows, const std::vector<Id>& metrics) {
-  Canonical record;
-  for (std::size_t i = 0; i < rows.size(); ++i) {
-    if (!rows[i].limit) continue;
-    const Limit& l = *rows[i].limit;
-    record.add(metrics[i]).add(l.specification.low).add(l.specification.high).add(l.nominal);
-    record.add(std::int64_t{static_cast<int>(l.guard)})
-        .add(l.share)
-        .add(l.budget_U)
-        .add(l.budget_of_reading)
-        .add(l.width);
-    record.add(l.applied.low).add(l.applied.high).add(l.reason);
-  }
-  const std::string digest = sha256(record.bytes());
+  const std::string digest = limits_part(limited(rows)).sha256;
   if (const auto found = applied_.find(digest); found != applied_.end()) return found->second;
   auto id = db_.first("SELECT id FROM applied WHERE sha256 = ?", Blob{digest});
   if (!id) {
@@ -266,10 +262,7 @@ void TrialWriter::insert_applied_limit(Id applied, Id metric, const Limit& l) {
 }
 
 TrialWriter::Id TrialWriter::equipment(const std::vector<InstrumentIdentity>& instruments) {
-  Canonical record;
-  for (const InstrumentIdentity& i : instruments)
-    record.add(i.instrument).add(i.maker).add(i.model).add(i.serial).add(i.firmware);
-  const std::string digest = sha256(record.bytes());
+  const std::string digest = instruments_part(instruments).sha256;
   if (const auto found = equipment_.find(digest); found != equipment_.end()) return found->second;
   auto id = db_.first("SELECT id FROM equipment WHERE sha256 = ?", Blob{digest});
   if (!id) {
@@ -292,11 +285,8 @@ TrialWriter::Id TrialWriter::instrument(const InstrumentIdentity& i) {
   return db_.last_id();
 }
 
-TrialWriter::Id TrialWriter::reduction(std::vector<std::pair<std::string, int>> versions) {
-  std::sort(versions.begin(), versions.end());
-  Canonical record;
-  for (const auto& [kind, version] : versions) record.add(kind).add(std::int64_t{version});
-  const std::string digest = sha256(record.bytes());
+TrialWriter::Id TrialWriter::reduction(const std::vector<std::pair<std::string, int>>& versions) {
+  const std::string digest = versions_part(versions).sha256;
   if (const auto found = reduction_.find(digest); found != reduction_.end()) return found->second;
   auto id = db_.first("SELECT id FROM reduction WHERE sha256 = ?", Blob{digest});
   if (!id) {
@@ -327,18 +317,40 @@ void TrialWriter::settle_counts(Id board) {
   db_.run("UPDATE trial SET counts = 1 WHERE id = ?", ids[*speaks]);
 }
 
-void TrialWriter::journal_begun(const OpenTrial& open, std::int64_t at_us) {
-  if (const auto body = bodies_.begun(bytes(open.uuid)); body && !db_.failed())
-    append_record(db_, body->station, RecordKind::trial_begun, bytes(open.uuid), at_us, body->sha256);
+/// The row's own hash, until a record covers it.
+void TrialWriter::mark(const OpenTrial& open) {
+  const auto body = bodies_.trial(bytes(open.uuid), std::vector<Bodies::Row>());
+  if (body && !db_.failed()) db_.run("UPDATE trial SET mark = ? WHERE id = ?", Blob{body->sha256}, open.id);
 }
 
 /// Stamped by the clock at the trial's end; without one, by its begin and what it took.
-void TrialWriter::journal_ended(const OpenTrial& open, const TrialEnd& end, std::vector<Bodies::Row> findings) {
-  const auto body = bodies_.ended(bytes(open.uuid), std::move(findings));
+void TrialWriter::journal(const OpenTrial& open, const TrialEnd& end, std::vector<Bodies::Row> findings) {
+  const auto body = bodies_.trial(bytes(open.uuid), std::move(findings));
   if (!body || db_.failed()) return;
-  const auto began_us = db_.first("SELECT at_us FROM trial WHERE id = ?", open.id).value_or(0);
-  append_record(db_, body->station, RecordKind::trial_ended, bytes(open.uuid),
-                end.at_us != 0 ? end.at_us : began_us + end.took_ms * 1000, body->sha256);
+  std::int64_t at_us = end.at_us;
+  if (at_us == 0) at_us = db_.first("SELECT at_us FROM trial WHERE id = ?", open.id).value_or(0) + end.took_ms * 1000;
+  append_record(db_, body->station, RecordKind::trial, bytes(open.uuid), at_us, body->sha256);
+}
+
+Result<int> TrialWriter::close_cut_short(const std::string& station, std::int64_t at_us) {
+  Transaction transaction(db_, Transaction::Kind::write);
+  std::vector<std::pair<Id, std::string>> open;
+  {
+    Query q = db_.query(
+        "SELECT t.id, t.uuid FROM trial t CROSS JOIN station s ON s.id = t.station WHERE t.state = 0 AND s.name = ? "
+        "AND t.id > (SELECT max(id) FROM trial) - ? ORDER BY t.id",
+        station, looked_through);
+    while (q.next()) open.emplace_back(q.integer(0), q.text(1));
+  }
+  for (const auto& [id, uuid] : open) {
+    db_.run("UPDATE trial SET state = 2, mark = NULL WHERE id = ?", id);
+    if (const auto body = bodies_.trial(uuid, std::vector<Bodies::Row>()); body && !db_.failed())
+      append_record(db_, body->station, RecordKind::trial, uuid, at_us, body->sha256);
+  }
+  const auto done = transaction.commit();
+  if (done) return static_cast<int>(open.size());
+  forget();
+  return done.error();
 }
 
 void TrialWriter::forget() {

@@ -18,6 +18,9 @@ class TrialWriter {
 
   Result<OpenTrial> begin(const TrialStart& start);
   Result<Done> finish(const OpenTrial& open, const TrialEnd& end);
+  /// Gives every open trial of the station its record, as cut short: for whoever alone drives the station.
+  /// @return how many
+  Result<int> close_cut_short(const std::string& station, std::int64_t at_us);
 
  private:
   using Id = std::int64_t;
@@ -50,7 +53,7 @@ class TrialWriter {
   Id settle_applied(const std::vector<FindingRow>& rows, const std::vector<Id>& metrics);
   Id equipment(const std::vector<InstrumentIdentity>& instruments);
   Id instrument(const InstrumentIdentity& identity);
-  Id reduction(std::vector<std::pair<std::string, int>> versions);
+  Id reduction(const std::vector<std::pair<std::string, int>>& versions);
   void insert_open(const TrialStart& start, OpenTrial& open);
   /// @return the rows as written
   std::vector<Bodies::Row> insert_findings(const OpenTrial& open, const std::vector<FindingRow>& rows,
@@ -58,8 +61,8 @@ class TrialWriter {
   void insert_applied_limit(Id applied, Id metric, const Limit& limit);
   void close(const OpenTrial& open, const TrialEnd& end, const Tally& tally, Id applied);
   void settle_counts(Id board);
-  void journal_begun(const OpenTrial& open, std::int64_t at_us);
-  void journal_ended(const OpenTrial& open, const TrialEnd& end, std::vector<Bodies::Row> findings);
+  void mark(const OpenTrial& open);
+  void journal(const OpenTrial& open, const TrialEnd& end, std::vector<Bodies::Row> findings);
   void forget();
 
   Database& db_;

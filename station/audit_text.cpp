@@ -25,13 +25,6 @@ std::string count(std::int64_t n, const char* one) {
   return fmt::format("{} {}{}", n, one, n == 1 ? "" : "s");
 }
 
-/// "trial ended of TB3-0001 (station bench 1, epoch 1, record 12): the rows are not what was recorded"
-std::string sentence(const Difference& d) {
-  if (d.record.empty()) return d.what;
-  const std::string on = d.on.empty() ? "" : " of " + d.on;
-  return fmt::format("{}{} (station {}, epoch {}, record {}): {}", d.record, on, d.station, d.epoch, d.seq, d.what);
-}
-
 std::string differences_text(const AuditReport& report) {
   std::string out;
   const auto record = std::find_if(report.differences.begin(), report.differences.end(),
@@ -42,7 +35,7 @@ std::string differences_text(const AuditReport& report) {
   for (const Difference& d : report.differences) out += "  " + printable(sentence(d)) + "\n";
   const auto more = report.found - static_cast<std::int64_t>(report.differences.size());
   if (more > 0) out += fmt::format("  and {} more\n", more);
-  return out + "Put the file aside as it is, restore the last backup, and find out who or what changed it.\n";
+  return out + fmt::format("Now {}; and find out who or what changed it.\n", restore_advice);
 }
 
 std::string heads_text(const AuditReport& report) {
@@ -62,8 +55,16 @@ std::string page(const AuditReport& report, const std::string& store) {
   std::string out = printable(store);
   out += report.whole() ? ": whole. Every record is as it was made.\n"
                         : fmt::format(": NOT as recorded: {}.\n", count(report.found, "difference"));
-  out += fmt::format("Checked: {} ({} begun, {}), {}, the file, its schema.\n", count(report.records, "record"),
+  out += fmt::format("Checked: {} ({}, {}), {}, the file, its schema.\n", count(report.records, "record"),
                      count(report.trials, "trial"), count(report.lists, "list"), count(report.findings, "finding"));
+  if (report.open > 0)
+    out +=
+        count(report.open, "trial") +
+        (report.open == 1 ? " has no record yet: it is under way, or was cut short and is recorded at the next start.\n"
+                          : " have no record yet: under way, or cut short and recorded at the next start.\n");
+  if (report.archived > 0)
+    out +=
+        fmt::format("The raw readings of {} are archived away; their hashes stand.\n", count(report.archived, "trial"));
   if (report.steps_back > 0)
     out += fmt::format("{} record{} a stamp before the one before: a clock was set back. Their order is the chain's.\n",
                        report.steps_back, report.steps_back == 1 ? " bears" : "s bear");
@@ -122,6 +123,8 @@ std::string render(const AuditReport& report, const std::string& store, bool jso
   out["trials"] = report.trials;
   out["lists"] = report.lists;
   out["findings"] = report.findings;
+  out["open_trials"] = report.open;
+  out["archived_readings"] = report.archived;
   out["clock_steps_back"] = report.steps_back;
   out["found"] = report.found;
   out["differences"] = list_of(report.differences);

@@ -122,7 +122,7 @@ expect 0 "whole. Every record is as it was made." audit
 expect 0 "agree to the last bit, 0 do not" audit --recompute
 expect 0 "boards entered" log --serial TB3-0001
 ask "update finding set value = value * 2 where trial = 1 and metric = 1"
-expect 5 "trial ended of TB3-0001" audit
+expect 5 "trial of TB3-0001" audit
 
 echo "$passed passed, $failed failed"
 [ "$failed" = 0 ]

@@ -43,14 +43,15 @@ BareStore::BareStore(const std::string& path, const std::string& from) {
   insert_trial_ =
       prepare(to_,
               "INSERT INTO trial(id, uuid, board, ord, station, nest, at_us, state, judgement, void_reason, "
-              "origin, attempt, counts, setup, revision, operator, depth) "
-              "VALUES(?, ?, ?, ?, ?, ?, ?, 0, 2, 'open', ?, ?, ?, ?, ?, ?, ?)");
-  end_trial_ = prepare(to_,
-                       "UPDATE trial SET state = 1, took_ms = ?, judgement = ?, void_reason = ?, applied = ?, "
-                       "equipment = ?, reduction = ?, ambient_degC = ?, unsafe = ?, nogo = ?, deciding_metric = ?, "
-                       "worst_metric = ?, worst_margin = ? WHERE id = ?");
+              "origin, attempt, counts, setup, revision, operator, depth, mark) "
+              "VALUES(?, ?, ?, ?, ?, ?, ?, 0, 2, 'open', ?, ?, ?, ?, ?, ?, ?, zeroblob(32))");
+  end_trial_ =
+      prepare(to_,
+              "UPDATE trial SET state = 1, mark = NULL, took_ms = ?, judgement = ?, void_reason = ?, applied = ?, "
+              "equipment = ?, reduction = ?, ambient_degC = ?, unsafe = ?, nogo = ?, deciding_metric = ?, "
+              "worst_metric = ?, worst_margin = ? WHERE id = ?");
   insert_finding_ = prepare(to_, "INSERT INTO finding VALUES(?, ?, ?, ?, ?, ?, ?)");
-  insert_readings_ = prepare(to_, "INSERT INTO reading_blob VALUES(?, ?, ?)");
+  insert_readings_ = prepare(to_, "INSERT INTO reading_blob VALUES(?, ?, ?, ?)");
   if (journal_) insert_journal_ = prepare(to_, "INSERT INTO journal VALUES(?, ?, ?, ?, ?, ?, ?, ?)");
 }
 
@@ -90,10 +91,10 @@ void BareStore::load(std::int64_t first, std::int64_t last) {
     trials_.push_back(std::move(trial));
   }
   if (!journal_ || trials_.empty()) return;
-  // Two records a trial, in the order of the trials, after those that the lists made.
-  auto all = rows("SELECT * FROM journal WHERE kind IN (1, 2) ORDER BY station, epoch, seq LIMIT " +
-                  std::to_string(2 * trials_.size()) + " OFFSET " + std::to_string(2 * (first - 1)));
-  for (std::size_t i = 0; i < all.size(); ++i) trials_[i / 2].journal.push_back(std::move(all[i]));
+  // A record a trial, in the order of the trials, after those that the lists made.
+  auto all = rows("SELECT * FROM journal WHERE kind = 4 ORDER BY station, epoch, seq LIMIT " +
+                  std::to_string(trials_.size()) + " OFFSET " + std::to_string(first - 1));
+  for (std::size_t i = 0; i < all.size(); ++i) trials_[i].journal.push_back(std::move(all[i]));
 }
 
 double BareStore::log() {
@@ -101,13 +102,12 @@ double BareStore::log() {
   for (const Trial& trial : trials_) {
     run("BEGIN IMMEDIATE");
     insert(insert_trial_, trial.begun);
-    if (journal_) insert(insert_journal_, trial.journal.at(0));
     run("COMMIT");
     run("BEGIN IMMEDIATE");
     insert(end_trial_, trial.ended);
     for (const Row& row : trial.findings) insert(insert_finding_, row);
     for (const Row& row : trial.readings) insert(insert_readings_, row);
-    if (journal_) insert(insert_journal_, trial.journal.at(1));
+    if (journal_) insert(insert_journal_, trial.journal.at(0));
     run("COMMIT");
   }
   return now_s() - began_s;

@@ -4,6 +4,8 @@
 
 #include <limits>
 
+#include "db/canonical.hpp"
+
 using namespace jigwright;
 
 TEST_CASE("SHA-256 of the examples published with FIPS 180-4") {

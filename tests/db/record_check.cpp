@@ -37,7 +37,7 @@ void check_trials(Database& db, const Factory& factory, Held& out) {
       "JOIN board b ON b.id = t.board");
   while (q.next()) {
     const auto uuid = uuid_from_bytes(q.text(1));
-    const bool open = q.integer(2) == 0;
+    const bool open = q.integer(2) != 1;  // under way, or cut short by a cut of the power
     out.trials[uuid ? text(*uuid) : "?"] = open ? Kept::open : Kept::whole;
     std::string wrong;
     if (open) {

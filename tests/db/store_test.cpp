@@ -34,11 +34,11 @@ void plain_sql(const std::string& path, const char* sql) {
 
 }  // namespace
 
-TEST_CASE("a new store is a WAL file with our mark, layout 2, and syncs fully") {
+TEST_CASE("a new store is a WAL file with our mark, layout 3, and syncs fully") {
   room::TempFolder folder;
   const auto store = room::open(folder.file("s.db"));
   CHECK(number(*store, "PRAGMA application_id") == 0x4a494757);
-  CHECK(number(*store, "PRAGMA user_version") == 2);
+  CHECK(number(*store, "PRAGMA user_version") == 3);
   CHECK(word(*store, "PRAGMA journal_mode") == "wal");
   CHECK(number(*store, "PRAGMA synchronous") == 2);
   CHECK(number(*store, "PRAGMA foreign_keys") == 1);
@@ -82,10 +82,10 @@ TEST_CASE("another program's SQLite file is refused and left alone") {
 TEST_CASE("a newer program's store is refused in plain words") {
   room::TempFolder folder;
   room::open(folder.file("s.db"));
-  plain_sql(folder.file("s.db"), "PRAGMA user_version = 3");
+  plain_sql(folder.file("s.db"), "PRAGMA user_version = 4");
   const auto store = Store::open(folder.file("s.db"));
   REQUIRE(!store);
-  CHECK(store.error().what == "a newer program made this store (layout 3, this program knows layout 2)");
+  CHECK(store.error().what == "a newer program made this store (layout 4, this program knows layout 3)");
   CHECK(store.error().to_do == "use the newer program; nothing was changed");
 }
 

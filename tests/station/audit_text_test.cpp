@@ -22,7 +22,7 @@ AuditReport differing() {
   AuditReport report = whole();
   report.found = 2;
   report.differences = {{"5 reels in the store, 4 recorded", {}, {}, {}, 0, 0},
-                        {"the rows are not what was recorded", "trial ended", "TB3-0001", "bench 1", 1, 3}};
+                        {"the rows are not what was recorded", "trial", "TB3-0001", "bench 1", 1, 3}};
   return report;
 }
 
@@ -31,7 +31,7 @@ AuditReport differing() {
 TEST_CASE("the page of a whole store says so and ends with each chain's head") {
   CHECK(render(whole(), "results.db", false) ==
         "results.db: whole. Every record is as it was made.\n"
-        "Checked: 3 records (1 trial begun, 1 list), 40 findings, the file, its schema.\n"
+        "Checked: 3 records (1 trial, 1 list), 40 findings, the file, its schema.\n"
         "Note this elsewhere: a chain that is cut off later, rows and all, shows only beside it.\n"
         "  station bench 1, epoch 1, record 3, 2026-01-09T12:00:00Z:\n"
         "    abababababababababababababababababababababababababababababababab\n");
@@ -41,7 +41,7 @@ TEST_CASE("the page of a store that differs names the first record that does, th
   const std::string page = render(differing(), "results.db", false);
   CHECK(page.starts_with("results.db: NOT as recorded: 2 differences.\n"));
   CHECK(page.find("The first record that differs:\n"
-                  "  trial ended of TB3-0001 (station bench 1, epoch 1, record 3): the rows are not what was recorded\n"
+                  "  trial of TB3-0001 (station bench 1, epoch 1, record 3): the rows are not what was recorded\n"
                   "All that was found:\n"
                   "  5 reels in the store, 4 recorded\n") != std::string::npos);
   CHECK(page.find("Its chains end so; compare with what was noted elsewhere:\n") != std::string::npos);
@@ -75,9 +75,9 @@ TEST_CASE("as JSON, a difference without a record has nulls in its place") {
 
 TEST_CASE("the log is aligned, and nothing in it drives a terminal") {
   const std::vector<LogLine> log = {{"bench 1", 1, 9, noon_us, "", "boards entered", "boards.csv"},
-                                    {"bench 1", 1, 10, noon_us, "M. Muster", "trial ended: GO", "TB\x1b[2J"}};
+                                    {"bench 1", 1, 10, noon_us, "M. Muster", "trial: GO", "TB\x1b[2J"}};
   CHECK(render(log, false) ==
-        "2026-01-09T12:00:00Z  -          boards entered   boards.csv  bench 1, epoch 1, record 9\n"
-        "2026-01-09T12:00:00Z  M. Muster  trial ended: GO  TB?[2J      bench 1, epoch 1, record 10\n");
+        "2026-01-09T12:00:00Z  -          boards entered  boards.csv  bench 1, epoch 1, record 9\n"
+        "2026-01-09T12:00:00Z  M. Muster  trial: GO       TB?[2J      bench 1, epoch 1, record 10\n");
   CHECK(render(std::vector<LogLine>{}, false) == "Nothing is on record.\n");
 }
