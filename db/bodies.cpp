@@ -224,7 +224,7 @@ std::optional<TrialBody> Bodies::read(std::string_view uuid, bool check, bool fi
   body_.add(static_cast<std::int64_t>(rows_.size()));
   for (std::size_t i : set.order) {
     const Row& row = rows_[i];
-    body_.add(row.value).add(row.u).add(row.n).add(row.state).add(row.verdict);
+    body_.add(row.value).add(row.u).small(row.n).small(row.state).small(row.verdict);
   }
   out.findings = static_cast<std::int64_t>(rows_.size());
   add_readings(out);

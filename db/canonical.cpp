@@ -30,6 +30,11 @@ Canonical& Canonical::add(std::optional<double> maybe) {
   return *this;
 }
 
+Canonical& Canonical::small(std::int64_t number) {
+  if (number >= 0 && number < 255) return mark(static_cast<char>(number));
+  return mark('\xff').add(number);
+}
+
 Canonical& Canonical::real(double number) {
   if (std::isnan(number)) return null();
   return mark(static_cast<char>(ColumnType::real)).add(number == 0 ? 0.0 : number);
@@ -70,6 +75,11 @@ char CanonicalReader::mark() {
   const char out = left_.front();
   left_.remove_prefix(1);
   return out;
+}
+
+std::int64_t CanonicalReader::small() {
+  const auto first = static_cast<unsigned char>(mark());
+  return first < 255 ? first : integer();
 }
 
 std::optional<double> CanonicalReader::maybe_real() {

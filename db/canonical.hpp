@@ -18,6 +18,7 @@ class Canonical {
   Canonical& add(std::int64_t number);          ///< two's complement
   Canonical& add(double number);                ///< IEEE 754 binary64; every NaN alike
   Canonical& add(std::optional<double> maybe);  ///< a presence byte first
+  Canonical& small(std::int64_t number);        ///< one byte, 0 .. 254; else a byte 255 and the number
   Canonical& mark(char byte) {                  ///< one byte as it is
     bytes_ += byte;
     return *this;
@@ -49,6 +50,7 @@ class CanonicalReader {
   std::string_view text();
   std::int64_t integer();
   std::optional<double> maybe_real();
+  std::int64_t small();
   char mark();
 
   /// The next typed column.

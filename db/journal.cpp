@@ -141,6 +141,14 @@ void append_lists(Database& database, std::int64_t station, std::int64_t first, 
   }
 }
 
+void append_epoch(Database& database, std::int64_t station, std::string_view uuid, std::int64_t at_us) {
+  const auto body = Bodies(database).epoch_begun(uuid);
+  if (!body || database.failed()) return;
+  add(database, station, chain_start(),
+      {journal_head(database, station).epoch + 1, 1, static_cast<int>(RecordKind::epoch_begun), std::string(uuid),
+       at_us, sha256(*body)});
+}
+
 void begin_epoch(Database& database, UuidMaker& uuids, std::int64_t station, const std::string& reason,
                  const std::string& who, std::int64_t at_us) {
   const JournalHead head = journal_head(database, station);
@@ -149,10 +157,7 @@ void begin_epoch(Database& database, UuidMaker& uuids, std::int64_t station, con
   database.run("INSERT INTO epoch_begun(uuid, reason, who, last_epoch, last_seq, last_hash) VALUES(?, ?, ?, ?, ?, ?)",
                Blob{bytes(uuid)}, reason, who.empty() ? std::nullopt : std::optional(who), head.epoch, head.seq,
                Blob{head.hash});
-  const auto body = Bodies(database).epoch_begun(bytes(uuid));
-  if (!body || database.failed()) return;
-  add(database, station, chain_start(),
-      {head.epoch + 1, 1, static_cast<int>(RecordKind::epoch_begun), std::string(bytes(uuid)), at_us, sha256(*body)});
+  append_epoch(database, station, bytes(uuid), at_us);
 }
 
 std::int64_t station_row(Database& database, UuidMaker& uuids, const std::string& name, std::int64_t at_us) {

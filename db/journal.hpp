@@ -57,6 +57,9 @@ JournalHead journal_head(Database& database, std::int64_t station);
 void begin_epoch(Database& database, UuidMaker& uuids, std::int64_t station, const std::string& reason,
                  const std::string& who, std::int64_t at_us);
 
+/// The first record of the next epoch, whose row in `epoch_begun` is there.
+void append_epoch(Database& database, std::int64_t station, std::string_view uuid, std::int64_t at_us);
+
 /// Row of the station's name, made when it is new.
 std::int64_t station_row(Database& database, UuidMaker& uuids, const std::string& name, std::int64_t at_us);
 

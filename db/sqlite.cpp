@@ -22,7 +22,7 @@ std::string advice(int code) {
     case SQLITE_IOERR:
       return "check the disk and its connection, then repeat";
     case SQLITE_CORRUPT:
-      return "the file is damaged: put it aside and restore the last backup";
+      return "the file is damaged: put it aside, and restore the last backup with \"jigwright restore\"";
     case SQLITE_NOTADB:
       return "name a store that this program made, or a path where none stands yet";
     default:

@@ -6,6 +6,7 @@
 
 #include "db/audit.hpp"
 #include "db/free_space.hpp"
+#include "db/keeper.hpp"
 #include "db/migrate.hpp"
 #include "db/schema.hpp"
 #include "db/trial_writer.hpp"
@@ -25,8 +26,10 @@ std::int64_t utc_us() {
 
 }  // namespace
 
-Store::Store(std::unique_ptr<Database> database)
-    : database_(std::move(database)), writer_(std::make_unique<TrialWriter>(*database_, uuids_)) {}
+Store::Store(std::unique_ptr<Database> database, const BackupPlan& backups)
+    : database_(std::move(database)),
+      writer_(std::make_unique<TrialWriter>(*database_, uuids_)),
+      keeper_(std::make_unique<Keeper>(*database_, backups)) {}
 
 Store::~Store() = default;
 
@@ -40,7 +43,7 @@ Result<std::unique_ptr<Store>> Store::open(const std::string& path, const StoreO
   auto database =
       Database::open(path, write ? Database::Access::write : Database::Access::read, create, options.busy_ms);
   if (!database) return database.error();
-  std::unique_ptr<Store> store(new Store(std::move(database.value())));
+  std::unique_ptr<Store> store(new Store(std::move(database.value()), options.backups));
   const Uuid uuid = store->uuids_.next(now_us / 1000);
   const auto layout = settle_schema(*store->database_, create, bytes(uuid));
   if (!layout) return layout.error();
@@ -79,6 +82,7 @@ Result<Done> Store::drive(const std::string& station, std::int64_t now_us) {
 }
 
 Result<OpenTrial> Store::begin_trial(const TrialStart& start) {
+  if (const auto damage = keeper_->damage()) return *damage;
   if (const auto driven = drive(start.station, start.at_us); !driven) return driven.error();
   if (const auto room = check_space(database_->path()); !room) return room.error();
   return writer_->begin(start);
@@ -86,6 +90,18 @@ Result<OpenTrial> Store::begin_trial(const TrialStart& start) {
 
 Result<Done> Store::finish_trial(const OpenTrial& open, const TrialEnd& end) {
   return writer_->finish(open, end);
+}
+
+void Store::upkeep() {
+  keeper_->tend(utc_us());
+}
+
+void Store::finish_upkeep() {
+  keeper_->finish();
+}
+
+std::vector<std::string> Store::take_news() {
+  return keeper_->take_news();
 }
 
 Result<std::vector<EnteredFile>> Store::enter(const std::vector<std::shared_ptr<const SourceText>>& sources,

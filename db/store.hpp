@@ -6,6 +6,7 @@
 #include <memory>
 #include <string>
 
+#include "db/backup.hpp"
 #include "db/enter.hpp"
 #include "db/questions.hpp"
 #include "db/station_lock.hpp"
@@ -13,6 +14,7 @@
 
 namespace jigwright {
 
+class Keeper;
 class TrialWriter;
 
 struct StoreOptions {
@@ -20,6 +22,7 @@ struct StoreOptions {
   Access access{Access::write};
   bool create{true};    ///< make the file when it is missing or empty; only for writing
   int busy_ms{10'000};  ///< how long to wait for another writer
+  BackupPlan backups;   ///< of a process that tries boards
 };
 
 class Store final : public TrialLog {
@@ -40,6 +43,13 @@ class Store final : public TrialLog {
   Result<OpenTrial> begin_trial(const TrialStart& start) override;
   Result<Done> finish_trial(const OpenTrial& open, const TrialEnd& end) override;
 
+  /// Copies of records, and a backup on a thread of its own when one is due.
+  void upkeep() override;
+  /// Waits for a backup under way, and copies the last records: before the program ends.
+  void finish_upkeep();
+  /// What a person should know of backups since the last call.
+  std::vector<std::string> take_news();
+
   /// Takes lists of boards, reels and feeds in, all files or none: see enter.hpp.
   Result<std::vector<EnteredFile>> enter(const std::vector<std::shared_ptr<const SourceText>>& sources,
                                          std::int64_t now_us, Faults& faults, const EnteredBy& by = {});
@@ -54,7 +64,7 @@ class Store final : public TrialLog {
   UuidMaker& uuids() { return uuids_; }
 
  private:
-  explicit Store(std::unique_ptr<Database> database);
+  Store(std::unique_ptr<Database> database, const BackupPlan& backups);
   Result<Done> drive(const std::string& station, std::int64_t now_us);
   static Result<std::unique_ptr<Store>> reopened(const std::string& path, StoreOptions options);
 
@@ -63,6 +73,7 @@ class Store final : public TrialLog {
   UuidMaker uuids_;
   std::unique_ptr<Database> database_;
   std::unique_ptr<TrialWriter> writer_;
+  std::unique_ptr<Keeper> keeper_;
 };
 
 }  // namespace jigwright

@@ -26,6 +26,10 @@ class TrialLog {
   /// Turns the open trial into its ended record with all findings and readings, durable at return. On an error nothing
   /// of it stands and the trial remains an open VOID; GO must then not be shown.
   virtual Result<Done> finish_trial(const OpenTrial& open, const TrialEnd& end) = 0;
+
+  /// What can wait until a trial's end was told: called after it, before the next begin. Nothing that fails in it
+  /// touches a trial.
+  virtual void upkeep() {}
 };
 
 }  // namespace jigwright

@@ -139,13 +139,15 @@ TrialWriter::Id TrialWriter::revision(const TrialStart& start, std::optional<Id>
   return db_.last_id();
 }
 
-void TrialWriter::insert_open(const TrialStart& start, OpenTrial& open) {
+void TrialWriter::insert_open(const TrialStart& start, OpenTrial& open, int attempt) {
   const Id on = board(start.serial);
   const Id at = station_row(db_, uuids_, start.station, start.at_us);
   std::optional<Id> ord, who;
   if (!start.order.empty()) ord = order(start.order);
   if (!start.operator_name.empty()) who = person(start.operator_name);
-  open.attempt = static_cast<int>(db_.first("SELECT count(*) FROM trial WHERE board = ?", on).value_or(0)) + 1;
+  open.attempt = attempt;
+  if (attempt == 0)
+    open.attempt = static_cast<int>(db_.first("SELECT count(*) FROM trial WHERE board = ?", on).value_or(0)) + 1;
   db_.run(
       "INSERT INTO trial(uuid, board, ord, station, nest, at_us, state, judgement, void_reason, origin, attempt, "
       "counts, setup, revision, operator, depth) VALUES(?, ?, ?, ?, ?, ?, 0, 2, ?, ?, ?, 0, ?, ?, ?, ?)",
@@ -168,15 +170,65 @@ Result<Done> TrialWriter::finish(const OpenTrial& open, const TrialEnd& end) {
     tally.worst = metrics[i];
     tally.worst_margin = judged.margin;
   }
-  close(open, end, tally, applied(end.findings, metrics));
-  std::vector<Bodies::Row> findings = insert_findings(open, end.findings, metrics);
+  std::vector<Bodies::Row> findings = write_end(open, end, tally, metrics);
   db_.run("INSERT INTO reading_blob(trial, format, body) VALUES(?, ?, ?)", open.id, end.readings_format,
           Blob{end.readings});
-  settle_counts(db_.first("SELECT board FROM trial WHERE id = ?", open.id).value_or(0));
   journal(open, end, std::move(findings));
   const auto done = transaction.commit();
   if (!done) forget();
   return done;
+}
+
+std::vector<Bodies::Row> TrialWriter::write_end(const OpenTrial& open, const TrialEnd& end, const Tally& tally,
+                                                const std::vector<Id>& metrics) {
+  close(open, end, tally, applied(end.findings, metrics));
+  std::vector<Bodies::Row> findings = insert_findings(open, end.findings, metrics);
+  settle_counts(db_.first("SELECT board FROM trial WHERE id = ?", open.id).value_or(0));
+  return findings;
+}
+
+/// Rows that a trial names by a uuid, as they were.
+void TrialWriter::settle_copied(const TrialCopy& copy) {
+  std::optional<Id> limits;
+  for (const Document& d : copy.start.documents) {
+    const Id id = document(d);
+    if (copy.revision_document && sha256(d.text) == *copy.revision_document) limits = id;
+  }
+  const auto held = db_.first("SELECT id FROM revision WHERE uuid = ?", Blob{copy.revision_uuid});
+  if (!held)
+    db_.run("INSERT INTO revision(uuid, limit_set, number, document) VALUES(?, ?, ?, ?)", Blob{copy.revision_uuid},
+            copy.start.limit_set, copy.start.limit_revision, limits);
+}
+
+void TrialWriter::replay(const TrialCopy& copy) {
+  check_origin(copy.start);
+  settle_copied(copy);
+  settle_setup(copy.start);
+  OpenTrial open;
+  open.uuid = copy.uuid;
+  open.attempt = copy.attempt;
+  const auto begun = db_.first("SELECT id FROM trial WHERE uuid = ? AND state = 0", Blob{bytes(copy.uuid)});
+  if (begun) open.id = *begun;
+  if (!begun) insert_open(copy.start, open, copy.attempt);
+  if (copy.state == TrialState::cut_short) db_.run("UPDATE trial SET state = 2, mark = NULL WHERE id = ?", open.id);
+  std::vector<Bodies::Row> findings;
+  if (copy.state == TrialState::ended) {
+    std::vector<Id> metrics;
+    for (const FindingRow& row : copy.end.findings) metrics.push_back(metric(row.metric));
+    Tally tally;
+    tally.missed = copy.missed;
+    if (copy.end.outcome.deciding >= 0) tally.deciding = metrics[static_cast<std::size_t>(copy.end.outcome.deciding)];
+    if (copy.worst >= 0) tally.worst = metrics[static_cast<std::size_t>(copy.worst)];
+    tally.worst_margin = copy.worst_margin;
+    findings = write_end(open, copy.end, tally, metrics);
+  }
+  if (!copy.archived_sha256.empty())
+    db_.run("INSERT INTO reading_blob(trial, format, sha256) VALUES(?, ?, ?)", open.id, copy.end.readings_format,
+            Blob{copy.archived_sha256});
+  else if (copy.end.readings_format != 0)
+    db_.run("INSERT INTO reading_blob(trial, format, body) VALUES(?, ?, ?)", open.id, copy.end.readings_format,
+            Blob{copy.end.readings});
+  journal(open, copy.end, std::move(findings));
 }
 
 void TrialWriter::close(const OpenTrial& open, const TrialEnd& end, const Tally& tally, Id applied) {

@@ -8,6 +8,7 @@
 
 #include "db/bodies.hpp"
 #include "db/sqlite.hpp"
+#include "db/trial_copy.hpp"
 #include "db/trial_log.hpp"
 
 namespace jigwright {
@@ -18,6 +19,9 @@ class TrialWriter {
 
   Result<OpenTrial> begin(const TrialStart& start);
   Result<Done> finish(const OpenTrial& open, const TrialEnd& end);
+  /// Writes a copy of a trial's record, all in the caller's transaction; an open row of the same uuid becomes it. What
+  /// can't be written so that it bears its own names and hashes fails the database or shows in the journal's hash.
+  void replay(const TrialCopy& copy);
   /// Gives every open trial of the station its record, as cut short: for whoever alone drives the station.
   /// @return how many
   Result<int> close_cut_short(const std::string& station, std::int64_t at_us);
@@ -54,7 +58,12 @@ class TrialWriter {
   Id equipment(const std::vector<InstrumentIdentity>& instruments);
   Id instrument(const InstrumentIdentity& identity);
   Id reduction(const std::vector<std::pair<std::string, int>>& versions);
-  void insert_open(const TrialStart& start, OpenTrial& open);
+  /// @param attempt  0 = the next of the board
+  void insert_open(const TrialStart& start, OpenTrial& open, int attempt = 0);
+  /// @return findings as written
+  std::vector<Bodies::Row> write_end(const OpenTrial& open, const TrialEnd& end, const Tally& tally,
+                                     const std::vector<Id>& metrics);
+  void settle_copied(const TrialCopy& copy);
   /// @return the rows as written
   std::vector<Bodies::Row> insert_findings(const OpenTrial& open, const std::vector<FindingRow>& rows,
                                            const std::vector<Id>& metrics);

@@ -26,7 +26,10 @@ class ThreadRecorder final : public Recorder {
   }
   Task<Result<Done>> finish(const OpenTrial& trial, const TrialEnd& end) override {
     const Clock::Hold hold(clock_);
-    co_return co_await on_thread<Result<Done>>([this, &trial, &end] { return log_.finish_trial(trial, end); });
+    Result<Done> done =
+        co_await on_thread<Result<Done>>([this, &trial, &end] { return log_.finish_trial(trial, end); });
+    asio::post(thread_, [this] { log_.upkeep(); });
+    co_return done;
   }
 
  private:

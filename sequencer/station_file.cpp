@@ -4,6 +4,7 @@
 
 #include <algorithm>
 #include <cctype>
+#include <cmath>
 #include <cstdlib>
 
 namespace jigwright {
@@ -43,6 +44,14 @@ std::string checked(TableReader& r, std::string_view key, std::string_view joint
   return instead;
 }
 
+void read_backups(const Node& table, Faults& faults, BackupPlan& out) {
+  TableReader r(table, "[backups]", faults);
+  out.folder = r.need_text("folder").value;
+  if (r.has("every")) out.every_s = std::llround(r.need_positive("every", Unit::second).value);
+  if (const auto keep = r.integer("keep", 1, 1000)) out.keep = static_cast<int>(keep->value);
+  r.finish();
+}
+
 }  // namespace
 
 std::string station_path(const std::string& named, const std::string& environment) {
@@ -64,9 +73,12 @@ StationFile read_station_tree(const Node& root, Faults& faults) {
     station.zone = checked(r, "zone", "/_-+", station.zone, "write a time zone, as in \"UTC\" or \"Europe/Vienna\"");
     r.finish();
   }
+  if (file.has("backups"))
+    if (const Node* table = file.need_table("backups")) read_backups(*table, faults, station.backups);
   file.finish();
   station.store = resolved(root, station.store);
   station.plan = resolved(root, station.plan);
+  station.backups.folder = resolved(root, station.backups.folder);
   return station;
 }
 

@@ -9,6 +9,7 @@
 
 #include "base/source.hpp"
 #include "base/toml.hpp"
+#include "db/backup.hpp"
 
 namespace jigwright {
 
@@ -18,6 +19,7 @@ struct StationFile {
   std::string plan;                          ///< likewise; empty = the command names it
   std::string language{"en"};                ///< a language tag as in BCP 47: "en", "de-AT"
   std::string zone{"UTC"};                   ///< a zone of the IANA time zone database: "Europe/Vienna"
+  BackupPlan backups;                        ///< of the store; its folder empty = none
   std::shared_ptr<const SourceText> source;  ///< empty = built-in defaults
 };
 

@@ -44,7 +44,9 @@ int enter(const EnterOptions& options) {
     if (!source) return fail(source.error());
     sources.push_back(std::move(source.value()));
   }
-  auto store = Store::open(options.store);
+  StoreOptions how;
+  how.backups = options.backups;
+  auto store = Store::open(options.store, how);
   if (!store) return fail(store.error());
   tell(store.value()->notice());
   Faults faults;
@@ -56,6 +58,8 @@ int enter(const EnterOptions& options) {
     fmt::print(stderr, "{} fault{}: nothing of these files was taken in\n", n, n == 1 ? "" : "s");
     return exit_files;
   }
+  store.value()->finish_upkeep();
+  for (const std::string& news : store.value()->take_news()) tell(news);
   fmt::print("{}", render(entered.value()));
   return exit_go;
 }

@@ -6,6 +6,8 @@
 #include <utility>
 #include <vector>
 
+#include "db/backup.hpp"
+
 namespace jigwright {
 
 struct TryOptions {
@@ -20,6 +22,7 @@ struct TryOptions {
   std::vector<std::pair<std::string, std::string>> answers;  ///< step, answer
   std::uint64_t seed{1};
   bool real_time{false};
+  BackupPlan backups;
   bool json{false};
   bool quiet{false};
 };
@@ -38,6 +41,7 @@ int list_faults();
 struct EnterOptions {
   std::vector<std::string> files;
   std::string store, station_name, operator_name;
+  BackupPlan backups;
 };
 int enter(const EnterOptions& options);
 
@@ -66,5 +70,24 @@ struct LogOptions {
   bool json{false};
 };
 int log(const LogOptions& options);
+
+struct BackupOptions {
+  std::string folder, store;  ///< folder empty = the station's
+  BackupPlan backups;         ///< the station's
+};
+/// exit_store when the store is damaged.
+int backup(const BackupOptions& options);
+
+struct RestoreOptions {
+  std::string folder, store, operator_name;  ///< folder empty = the station's
+  BackupPlan backups;
+};
+/// exit_store when something is known to be missing.
+int restore(const RestoreOptions& options);
+
+struct ArchiveOptions {
+  std::string file, before, store, station_name, operator_name;
+};
+int archive(const ArchiveOptions& options);
 
 }  // namespace jigwright

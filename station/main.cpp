@@ -114,6 +114,22 @@ int main(int argc, char** argv) {
   log_command->add_option("--last", logging.last, "so many (default: 40; of a board, all)")->check(CLI::PositiveNumber);
   log_command->add_flag("--json", logging.json, "as JSON");
 
+  BackupOptions backing;
+  auto* backup_command = app.add_subcommand("backup", "Copy the store while the line works, and read the copy back");
+  backup_command->add_option("--to", backing.folder, "folder of the backups (default: the station's)");
+
+  RestoreOptions restoring;
+  auto* restore_command = app.add_subcommand("restore", "Make a damaged store again from its backups");
+  restore_command->add_option("--from", restoring.folder, "folder of the backups (default: the station's)");
+  restore_command->add_option("--operator", restoring.operator_name, "who restores, for the record");
+
+  ArchiveOptions archiving;
+  auto* archive_command = app.add_subcommand("archive", "Move raw readings of old trials out of the store");
+  archive_command->add_option("FILE", archiving.file, "new file for their records")->required();
+  archive_command->add_option("--before", archiving.before, "trials begun before this day (UTC), as in 2024-01-31")
+      ->required();
+  archive_command->add_option("--operator", archiving.operator_name, "who archives, for the record");
+
   try {
     app.parse(argc, argv);
   } catch (const CLI::ParseError& error) {
@@ -147,11 +163,14 @@ int main(int argc, char** argv) {
     }
     trying.store = store;
     trying.station_name = station->name;
+    trying.backups = station->backups;
     trying.program = "jigwright " JIGWRIGHT_VERSION;
     return try_boards(trying);
   }
   entering.store = tracing.store = showing.store = auditing.store = logging.store = store;
-  entering.station_name = station->name;
+  backing.store = restoring.store = archiving.store = store;
+  entering.station_name = archiving.station_name = station->name;
+  backing.backups = restoring.backups = entering.backups = station->backups;
   if (*enter_command) return enter(entering);
   if (*audit_command) {
     const int whole = audit(auditing);
@@ -159,6 +178,9 @@ int main(int argc, char** argv) {
     const RecomputeOptions again{store, auditing.json};
     return std::max(whole, recompute(again));
   }
+  if (*backup_command) return backup(backing);
+  if (*restore_command) return restore(restoring);
+  if (*archive_command) return archive(archiving);
   if (*log_command) return log(logging);
   if (*trace_command) return trace(tracing);
   return show(showing);

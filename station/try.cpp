@@ -155,13 +155,21 @@ int try_boards(const TryOptions& options) {
     return exit_files;
   }
   if (const auto words = check_fault_words(*plan->jig, options.faults); !words.ok()) return fail(words.error());
-  auto store = Store::open(options.store);
+  StoreOptions how;
+  how.backups = options.backups;
+  auto store = Store::open(options.store, how);
   if (!store.ok()) return fail(store.error());
   tell(store.value()->notice());
   auto serials = boards(options, *store.value(), *scenario);
   if (!serials.ok()) return fail(serials.error());
-  Run run(options, plan, scenario, *store.value());
-  return run.play(std::move(serials.value()));
+  int code = exit_fault;
+  {
+    Run run(options, plan, scenario, *store.value());
+    code = run.play(std::move(serials.value()));
+  }
+  store.value()->finish_upkeep();
+  for (const std::string& news : store.value()->take_news()) tell(news);
+  return code;
 }
 
 }  // namespace jigwright

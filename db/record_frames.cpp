@@ -1,0 +1,51 @@
+#include "db/record_frames.hpp"
+
+namespace jigwright {
+
+std::string RecordFrames::of(const ChainRow& record, std::unordered_set<std::string>& held) {
+  const JournalRow& row = record.row;
+  RecordCopy copy{record.station_uuid, record.station, row.epoch, row.seq, row.kind, row.uuid,
+                  row.at_us,           record.hash,    {},        {}};
+  std::string out = body_of(record, copy, held);
+  return out + record_frame(copy);
+}
+
+/// Fills in the body, and gives the frames of the parts that it names.
+std::string RecordFrames::body_of(const ChainRow& record, RecordCopy& copy, std::unordered_set<std::string>& held) {
+  std::string out;
+  const std::string& uuid = record.row.uuid;
+  switch (static_cast<RecordKind>(record.row.kind)) {
+    case RecordKind::trial: {
+      const auto trial = bodies_.trial(uuid);
+      if (!trial) break;
+      copy.body = bodies_.bytes();
+      for (const Part* part : bodies_.parts()) add_part(*part, held, out);
+      Query q = db_.query("SELECT body FROM reading_blob WHERE trial = ?", trial->id);
+      if (q.next()) copy.readings = q.text(0);
+      break;
+    }
+    case RecordKind::list_entered: {
+      const auto id = db_.first("SELECT id FROM entered WHERE uuid = ?", Blob{uuid}).value_or(0);
+      bodies_.entered(id, id, [&](std::int64_t, std::string_view bytes) { copy.body += bytes; });
+      break;
+    }
+    case RecordKind::epoch_begun:
+      copy.body = bodies_.epoch_begun(uuid).value_or(std::string());
+      break;
+    case RecordKind::readings_archived:
+      copy.body = bodies_.archived(uuid).value_or(std::string());
+      break;
+  }
+  return out;
+}
+
+/// With a new part come all documents that the file has not: there are few, and the part may name one of them.
+void RecordFrames::add_part(const Part& part, std::unordered_set<std::string>& held, std::string& out) {
+  if (!held.insert(part.sha256).second) return;
+  Query q = db_.query("SELECT sha256, kind, name, body FROM document");
+  while (q.next())
+    if (held.insert(q.text(0)).second) out += document_frame({q.text(1), q.text(2), q.text(3)});
+  out += part_frame(part.bytes);
+}
+
+}  // namespace jigwright
