@@ -53,6 +53,7 @@ class Audit {
   void check_entered(const Link& link);
   void check_epoch(const Link& link);
   void check_archived(const Link& link);
+  void check_act(const Link& link, Id station);
   void check_open(const std::string& serial, const std::string& uuid);
   void check_trials();
   void check_board(const std::string& serial, const std::vector<PastTrial>& trials, const std::vector<Id>& counts);
@@ -233,6 +234,8 @@ void Audit::check_body(const Link& link, Id station) {
       return check_epoch(link);
     case RecordKind::readings_archived:
       return check_archived(link);
+    case RecordKind::act:
+      return check_act(link, station);
   }
   differs("this program knows no such record", link, {});
 }
@@ -260,6 +263,18 @@ void Audit::check_archived(const Link& link) {
   ++archives_;
   const auto body = bodies_.archived(link.row.uuid);
   if (!body || sha256(*body) != link.row.body_sha256) differs("the rows are not what was recorded", link, {});
+}
+
+void Audit::check_act(const Link& link, Id station) {
+  ++report_.acts;
+  const auto body = bodies_.act(link.row.uuid);
+  std::string kind;
+  if (Query q = db_.query("SELECT kind, station, at_us FROM act WHERE uuid = ?", Blob{link.row.uuid}); q.next()) {
+    kind = q.text(0);
+    if (q.integer(1) != station || q.integer(2) != link.row.at_us)
+      return differs("the rows are not what was recorded", link, kind);
+  }
+  if (!body || sha256(*body) != link.row.body_sha256) differs("the rows are not what was recorded", link, kind);
 }
 
 /// A trial under way, or cut short and not yet recorded so: its row bears its own hash.
@@ -293,7 +308,8 @@ void Audit::check_trials() {
   std::vector<PastTrial> trials;
   std::vector<Id> counts;
   Query q = db_.query(
-      "SELECT t.board, b.serial, t.id, t.state, t.judgement, t.counts, t.attempt, t.uuid, t.mark IS NULL FROM trial t "
+      "SELECT t.board, b.serial, t.id, t.state, t.judgement, t.counts, t.attempt, t.uuid, t.mark IS NULL, "
+      "EXISTS(SELECT 1 FROM act a WHERE a.trial = t.uuid AND a.kind = 'review') FROM trial t "
       "INDEXED BY trial_board "
       "LEFT JOIN board b ON b.id = t.board ORDER BY t.board, t.id");
   while (q.next()) {
@@ -304,7 +320,7 @@ void Audit::check_trials() {
       trials.clear();
       counts.clear();
     }
-    trials.push_back({static_cast<Judgement>(q.integer(4)), false});
+    trials.push_back({static_cast<Judgement>(q.integer(4)), q.integer(9) != 0});
     counts.push_back(q.integer(5));
     const bool recorded = trials_.contains(q.integer(2)), open = q.integer(3) == 0;
     if (!recorded && open) check_open(serial, q.text(7));
@@ -342,6 +358,8 @@ void Audit::check_counts() {
   count("SELECT count(*) FROM journal", report_.records, "records");
   count("SELECT count(*) FROM entered", report_.lists, "lists");
   count("SELECT count(*) FROM epoch_begun", epochs_, "begins of an epoch");
+  count("SELECT count(*) FROM act", report_.acts, "acts");
+  none("SELECT key FROM act_value WHERE act NOT IN (SELECT id FROM act)", "a value of no act");
   count("SELECT count(*) FROM archived", archives_, "archives of readings");
   count("SELECT count(*) FROM product_order WHERE product IS NOT NULL OR entered IS NOT NULL", orders_, "products");
   count("SELECT count(*) FROM build", builds_, "build places");
@@ -350,7 +368,7 @@ void Audit::check_counts() {
   none("SELECT designator FROM feed WHERE dropped_us IS NOT NULL", "a feed is dropped, and no record says so");
   none(
       "SELECT serial FROM board b WHERE NOT EXISTS(SELECT 1 FROM build WHERE board = b.id) AND "
-      "NOT EXISTS(SELECT 1 FROM trial WHERE board = b.id)",
+      "NOT EXISTS(SELECT 1 FROM trial WHERE board = b.id) AND NOT EXISTS(SELECT 1 FROM act_board WHERE board = b.id)",
       "a board that no record names");
   none(
       "SELECT name FROM product_order WHERE id NOT IN (SELECT ord FROM build UNION SELECT ord FROM feed UNION "

@@ -35,7 +35,7 @@ struct AuditReport {
   static constexpr std::size_t most_listed = 100;
   std::vector<Difference> differences;  ///< at most most_listed: the file, then records as chained, then rows
   std::int64_t found{};                 ///< all of them
-  std::int64_t records{}, trials{}, findings{}, lists{};
+  std::int64_t records{}, trials{}, findings{}, lists{}, acts{};
   std::int64_t open{};        ///< trials without a record yet: under way, or cut short and not yet recorded so
   std::int64_t archived{};    ///< trials whose raw readings were archived away: their hash stands
   std::int64_t steps_back{};  ///< records stamped more than 1 s before the one before: the clock was set back. No fault

@@ -200,7 +200,7 @@ std::optional<TrialBody> Bodies::read(std::string_view uuid, bool check, bool fi
       "SELECT t.id, t.station, b.serial, t.state, t.mark, t.setup, t.revision, t.applied, t.equipment, t.reduction, "
       "t.deciding_metric, t.worst_metric, t.nogo, t.worst_margin, "
       "t.uuid, b.serial, t.nest, t.at_us, t.origin, t.attempt, t.depth, o.name, p.name, t.state, t.took_ms, "
-      "t.judgement, t.void_reason, t.ambient_degC, t.unsafe, t.nogo, t.worst_margin "
+      "t.judgement, t.void_reason, t.ambient_degC, t.unsafe, t.nogo, t.worst_margin, t.purpose "
       "FROM trial t JOIN board b ON b.id = t.board LEFT JOIN product_order o ON o.id = t.ord "
       "LEFT JOIN person p ON p.id = t.operator WHERE t.uuid = ?",
       Blob{uuid});
@@ -214,7 +214,7 @@ std::optional<TrialBody> Bodies::read(std::string_view uuid, bool check, bool fi
   if (findings) read_findings(out.id);
   body_.clear();
   parts_.clear();
-  add_columns(body_, q, 14, 31);
+  add_columns(body_, q, 14, 32);
   for (const Part* part : {&station(out.station), &setup(q.integer(5)), &revision(q.integer(6)), &applied(q.integer(7)),
                            &equipment(q.integer(8)), &reduction(q.integer(9))})
     name(*part);
@@ -364,6 +364,22 @@ std::optional<std::string> Bodies::archived(std::string_view uuid) {
   return only(
       db_.query("SELECT uuid, who, before_us, trials, bytes, name, sha256 FROM archived WHERE uuid = ?", Blob{uuid}),
       7);
+}
+
+std::optional<std::string> Bodies::act(std::string_view uuid) {
+  Query q = db_.query("SELECT id, uuid, kind, at_us, who, second, reason, about, ends, trial FROM act WHERE uuid = ?",
+                      Blob{uuid});
+  if (!q.next()) return std::nullopt;
+  Canonical body;
+  add_columns(body, q, 1, 10);
+  Query boards = db_.query(
+      "SELECT b.serial FROM act_board a JOIN board b ON b.id = a.board WHERE a.act = ? "
+      "ORDER BY b.serial",
+      q.integer(0));
+  while (boards.next()) add_columns(body.mark('b'), boards, 0, 1);
+  Query values = db_.query("SELECT key, value FROM act_value WHERE act = ? ORDER BY key", q.integer(0));
+  while (values.next()) add_columns(body.mark('v'), values, 0, 2);
+  return body.bytes();
 }
 
 void Bodies::forget() {

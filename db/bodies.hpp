@@ -74,6 +74,8 @@ class Bodies {
   /// Bodies of one row; nullopt where no row bears the uuid.
   std::optional<std::string> epoch_begun(std::string_view uuid);
   std::optional<std::string> archived(std::string_view uuid);
+  /// With its boards and values.
+  std::optional<std::string> act(std::string_view uuid);
 
   /// What a setup's part will be, before there is one.
   Part setup_part(const std::string& plan, const std::string& program, const std::vector<Id>& documents);

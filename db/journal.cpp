@@ -17,7 +17,7 @@ struct Dated {
   LogLine line;
 };
 
-/// Columns from `at`: kind, judgement, list's kind, epoch's reason, archived trials.
+/// Columns from `at`: kind, judgement, list's kind, epoch's reason, archived trials, act's kind and reason.
 std::string what_of(const Query& q, int at) {
   switch (static_cast<RecordKind>(q.integer(at))) {
     case RecordKind::trial:
@@ -28,6 +28,8 @@ std::string what_of(const Query& q, int at) {
       return "epoch begun: " + q.text(at + 3);
     case RecordKind::readings_archived:
       return "raw readings of " + q.text(at + 4) + " trials archived";
+    case RecordKind::act:
+      return q.text(at + 5) + (q.null(at + 6) ? "" : ": " + q.text(at + 6));
   }
   return record_word(q.integer(at));
 }
@@ -45,26 +47,32 @@ std::vector<Dated> lines_of(Query q) {
 
 std::vector<Dated> lines_of_station(Database& database, std::int64_t station, std::int64_t last) {
   return lines_of(database.query(
-      "SELECT s.name, j.epoch, j.seq, j.at_us, coalesce(p.name, e.who, n.who, a.who), coalesce(b.serial, e.name, "
-      "a.name), j.kind, t.judgement, e.kind, n.reason, a.trials FROM journal j JOIN station s ON s.id = j.station "
+      "SELECT s.name, j.epoch, j.seq, j.at_us, coalesce(p.name, e.who, n.who, a.who, x.who), coalesce(b.serial, "
+      "e.name, a.name, x.about, (SELECT min(y.serial) FROM act_board w JOIN board y ON y.id = w.board WHERE "
+      "w.act = x.id)), j.kind, t.judgement, e.kind, n.reason, a.trials, x.kind, x.reason FROM journal j JOIN station s "
+      "ON s.id = j.station "
       "LEFT JOIN trial t ON t.uuid = j.uuid LEFT JOIN board b ON b.id = t.board LEFT JOIN person p ON "
       "p.id = t.operator LEFT JOIN entered e ON e.uuid = j.uuid LEFT JOIN epoch_begun n ON n.uuid = j.uuid "
-      "LEFT JOIN archived a ON a.uuid = j.uuid WHERE j.station = ? ORDER BY j.epoch DESC, j.seq DESC LIMIT ?",
+      "LEFT JOIN archived a ON a.uuid = j.uuid LEFT JOIN act x ON x.uuid = j.uuid WHERE j.station = ? ORDER BY j.epoch "
+      "DESC, j.seq DESC LIMIT ?",
       station, last));
 }
 
 std::vector<Dated> lines_of_serial(Database& database, std::int64_t station, const std::string& serial,
                                    std::int64_t last) {
   return lines_of(database.query(
-      "SELECT s.name, j.epoch, j.seq, j.at_us, coalesce(p.name, e.who, n.who, a.who), coalesce(b.serial, e.name, "
-      "a.name), j.kind, t.judgement, e.kind, n.reason, a.trials FROM journal j JOIN station s ON s.id = j.station "
+      "SELECT s.name, j.epoch, j.seq, j.at_us, coalesce(p.name, e.who, n.who, a.who, x.who), coalesce(b.serial, "
+      "e.name, a.name, x.about, (SELECT min(y.serial) FROM act_board w JOIN board y ON y.id = w.board WHERE "
+      "w.act = x.id)), j.kind, t.judgement, e.kind, n.reason, a.trials, x.kind, x.reason FROM journal j JOIN station s "
+      "ON s.id = j.station "
       "LEFT JOIN trial t ON t.uuid = j.uuid LEFT JOIN board b ON b.id = t.board LEFT JOIN person p ON "
       "p.id = t.operator LEFT JOIN entered e ON e.uuid = j.uuid LEFT JOIN epoch_begun n ON n.uuid = j.uuid "
-      "LEFT JOIN archived a ON a.uuid = j.uuid WHERE j.station = ? AND j.uuid IN "
+      "LEFT JOIN archived a ON a.uuid = j.uuid LEFT JOIN act x ON x.uuid = j.uuid WHERE j.station = ? AND j.uuid IN "
       "(SELECT k.uuid FROM board c JOIN trial k ON k.board = c.id WHERE c.serial = ? UNION ALL "
       "SELECT l.uuid FROM board c JOIN build d ON d.board = c.id JOIN entered l ON l.id = d.entered "
-      "WHERE c.serial = ?) ORDER BY j.epoch DESC, j.seq DESC LIMIT ?",
-      station, serial, serial, last));
+      "WHERE c.serial = ? UNION ALL SELECT m.uuid FROM board c JOIN act_board l ON l.board = c.id JOIN act m ON "
+      "m.id = l.act WHERE c.serial = ?) ORDER BY j.epoch DESC, j.seq DESC LIMIT ?",
+      station, serial, serial, serial, last));
 }
 
 std::vector<LogLine> merged(std::vector<Dated> lines, std::int64_t last) {
@@ -88,6 +96,8 @@ std::string record_word(std::int64_t kind) {
       return "epoch begun";
     case RecordKind::readings_archived:
       return "raw readings archived";
+    case RecordKind::act:
+      return "act";
   }
   return "record of an unknown kind";
 }

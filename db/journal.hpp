@@ -17,7 +17,7 @@ namespace jigwright {
 class Database;
 
 /// Stored; never renumbered. 1 and 2 were layout 2's begin and end of a trial.
-enum class RecordKind : std::uint8_t { list_entered = 3, trial = 4, epoch_begun = 5, readings_archived = 6 };
+enum class RecordKind : std::uint8_t { list_entered = 3, trial = 4, epoch_begun = 5, readings_archived = 6, act = 7 };
 
 /// "trial", "list entered"
 std::string record_word(std::int64_t kind);
@@ -25,7 +25,7 @@ std::string record_word(std::int64_t kind);
 struct JournalRow {
   std::int64_t epoch{1}, seq{1};
   std::int64_t kind{};
-  std::string uuid;  ///< bytes; of the trial, or of the row in `entered`, `epoch_begun`, `archived`
+  std::string uuid;  ///< bytes; of the trial, or of the row in `entered`, `epoch_begun`, `archived`, `act`
   std::int64_t at_us{};
   std::string body_sha256;  ///< 32 bytes
 };

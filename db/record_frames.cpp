@@ -35,6 +35,10 @@ std::string RecordFrames::body_of(const ChainRow& record, RecordCopy& copy, std:
     case RecordKind::readings_archived:
       copy.body = bodies_.archived(uuid).value_or(std::string());
       break;
+    case RecordKind::act:
+      copy.body = bodies_.act(uuid).value_or(std::string());
+      add_documents(held, out);  // an adopted revision names some
+      break;
   }
   return out;
 }
@@ -42,10 +46,17 @@ std::string RecordFrames::body_of(const ChainRow& record, RecordCopy& copy, std:
 /// With a new part come all documents that the file has not: there are few, and the part may name one of them.
 void RecordFrames::add_part(const Part& part, std::unordered_set<std::string>& held, std::string& out) {
   if (!held.insert(part.sha256).second) return;
-  Query q = db_.query("SELECT sha256, kind, name, body FROM document");
-  while (q.next())
-    if (held.insert(q.text(0)).second) out += document_frame({q.text(1), q.text(2), q.text(3)});
+  add_documents(held, out);
   out += part_frame(part.bytes);
+}
+
+void RecordFrames::add_documents(std::unordered_set<std::string>& held, std::string& out) {
+  Query q = db_.query("SELECT sha256, kind, name, id FROM document");
+  while (q.next()) {
+    if (!held.insert(q.text(0)).second) continue;
+    Query text = db_.query("SELECT body FROM document WHERE id = ?", q.integer(3));
+    if (text.next()) out += document_frame({q.text(1), q.text(2), text.text(0)});
+  }
 }
 
 }  // namespace jigwright

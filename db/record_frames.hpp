@@ -26,6 +26,7 @@ class RecordFrames {
 
  private:
   void add_part(const Part& part, std::unordered_set<std::string>& held, std::string& out);
+  void add_documents(std::unordered_set<std::string>& held, std::string& out);
   std::string body_of(const ChainRow& record, RecordCopy& copy, std::unordered_set<std::string>& held);
 
   Database& db_;

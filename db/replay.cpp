@@ -2,6 +2,7 @@
 
 #include <fmt/format.h>
 
+#include "db/act.hpp"
 #include "db/bodies.hpp"
 #include "db/digest.hpp"
 #include "db/journal.hpp"
@@ -36,6 +37,8 @@ class Replay {
   void write_row(char table, CanonicalReader& r, Id entry);
   void write_epoch(const RecordCopy& record);
   void write_archived(const RecordCopy& record);
+  void write_act(const RecordCopy& record, Id at);
+  void keep_document(const std::string& digits);
   Id named(Sql find, Sql make, const std::string& name);
 
   Database& db_;
@@ -128,6 +131,9 @@ void Replay::write(const RecordCopy& record) {
     case RecordKind::readings_archived:
       write_archived(record);
       return append_record(db_, at, RecordKind::readings_archived, record.uuid, record.at_us, sha256(record.body));
+    case RecordKind::act:
+      write_act(record, at);
+      return append_record(db_, at, RecordKind::act, record.uuid, record.at_us, sha256(record.body));
   }
 }
 
@@ -220,6 +226,45 @@ void Replay::write_archived(const RecordCopy& record) {
   db_.run("INSERT INTO archived(uuid, who, before_us, trials, bytes, name, sha256) VALUES(?, ?, ?, ?, ?, ?, ?)",
           Blob{uuid}, who, before_us, trials, length, name, Blob{digest});
   drop_readings(db_, before_us);
+}
+
+/// A document that an adopted revision names by its hash.
+void Replay::keep_document(const std::string& digits) {
+  for (const auto& [digest, document] : copies_.documents)
+    if (hex(digest) == digits)
+      db_.run("INSERT OR IGNORE INTO document(sha256, kind, name, body) VALUES(?, ?, ?, ?)", Blob{digest},
+              document.kind, document.name, document.text);
+}
+
+void Replay::write_act(const RecordCopy& record, Id at) {
+  CanonicalReader r(record.body);
+  const std::string uuid = r.blob_column(), kind = r.text_column();
+  const Id at_us = r.integer_column();
+  const auto who = r.maybe_text_column(), second = r.maybe_text_column(), reason = r.maybe_text_column(),
+             about = r.maybe_text_column();
+  const std::string ends = r.blob_column(), trial = r.blob_column();
+  const auto blob = [](const std::string& b) { return b.empty() ? std::nullopt : std::optional(Blob{b}); };
+  db_.run(
+      "INSERT INTO act(uuid, station, kind, at_us, who, second, reason, about, ends, trial, after_trial) "
+      "VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?, ?, (SELECT coalesce(max(id), 0) FROM trial))",
+      Blob{uuid}, at, kind, at_us, who, second, reason, about, blob(ends), blob(trial));
+  const Id act = db_.last_id();
+  while (!r.at_end() && !db_.failed()) {
+    const char row = r.mark();
+    if (row == 'b') {
+      const Id board =
+          named("SELECT id FROM board WHERE serial = ?", "INSERT INTO board(serial) VALUES(?)", r.text_column());
+      db_.run("INSERT INTO act_board(act, board) VALUES(?, ?)", act, board);
+    } else if (row == 'v') {
+      const std::string key = r.text_column();
+      const std::string value = r.text_column();
+      db_.run("INSERT INTO act_value(act, key, value) VALUES(?, ?, ?)", act, key, value);
+      if (kind == "adopt") keep_document(value);
+    } else {
+      r.fail();
+    }
+  }
+  settle_after(db_, uuid);
 }
 
 }  // namespace

@@ -194,13 +194,31 @@ CREATE TABLE reading_blob(
   CHECK((body IS NULL) = (sha256 IS NOT NULL))) STRICT;
 INSERT INTO reading_blob SELECT trial, format, body, NULL FROM reading_blob_2;
 DROP TABLE reading_blob_2;
--- journal.kind: 3 list entered, 4 trial, 5 epoch begun, 6 readings archived. Where the chain before an epoch ended.
+-- journal.kind: 3 list entered, 4 trial, 5 epoch begun, 6 readings archived, 7 act. Where the chain before an epoch ended.
 CREATE TABLE epoch_begun(
   id INTEGER PRIMARY KEY, uuid BLOB NOT NULL UNIQUE, reason TEXT NOT NULL, who TEXT, last_epoch INTEGER,
   last_seq INTEGER, last_hash BLOB) STRICT;
 CREATE TABLE archived(
   id INTEGER PRIMARY KEY, uuid BLOB NOT NULL UNIQUE, who TEXT, before_us INTEGER NOT NULL, trials INTEGER NOT NULL,
   bytes INTEGER NOT NULL, name TEXT NOT NULL, sha256 BLOB NOT NULL) STRICT;
+-- What people and the line do beside trials: act.hpp. after_trial: the newest trial then, for the order of a board's
+-- events, whatever the clock said.
+CREATE TABLE act(
+  id INTEGER PRIMARY KEY, uuid BLOB NOT NULL UNIQUE, station INTEGER NOT NULL REFERENCES station, kind TEXT NOT NULL,
+  at_us INTEGER NOT NULL, who TEXT, second TEXT, reason TEXT, about TEXT, ends BLOB, trial BLOB,
+  after_trial INTEGER NOT NULL) STRICT;
+CREATE INDEX act_kind ON act(kind, about);
+CREATE INDEX act_ends ON act(ends) WHERE ends IS NOT NULL;
+CREATE INDEX act_trial ON act(trial) WHERE trial IS NOT NULL;
+CREATE TABLE act_board(
+  act INTEGER NOT NULL REFERENCES act, board INTEGER NOT NULL REFERENCES board, PRIMARY KEY(act, board)) STRICT,
+  WITHOUT ROWID;
+CREATE INDEX act_board_board ON act_board(board);
+CREATE TABLE act_value(
+  act INTEGER NOT NULL REFERENCES act, key TEXT NOT NULL, value TEXT NOT NULL, PRIMARY KEY(act, key)) STRICT,
+  WITHOUT ROWID;
+-- purpose: 0 a board of an order, 1 the jig's check, 2 a reference board, 3 a reject sample.
+ALTER TABLE trial ADD COLUMN purpose INTEGER NOT NULL DEFAULT 0;
 -- One metric's findings over 512 trials, ids 512 * stretch + 1 to 512 * stretch + 512: derived, see columns.hpp.
 CREATE TABLE column_block(
   metric INTEGER NOT NULL REFERENCES metric, stretch INTEGER NOT NULL, body BLOB NOT NULL,

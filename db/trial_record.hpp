@@ -14,6 +14,9 @@ namespace jigwright {
 /// Where a result comes from. Stored; never renumbered. Simulated and measured trials don't share a store.
 enum class Origin : std::uint8_t { measured = 0, simulated = 1, taken = 2 };
 
+/// What a trial is for. Stored; never renumbered. Only boards of orders are counted in yields and questions.
+enum class Purpose : std::uint8_t { board = 0, jig_check = 1, reference_board = 2, reject_sample = 3 };
+
 /// A file that judged: its kind ("plan", "jig", "limits", "dialect") and full text. Kept once by its SHA-256.
 struct Document {
   std::string kind;
@@ -33,6 +36,7 @@ struct TrialStart {
   int nest{1};
   std::int64_t at_us{};  ///< UTC, microseconds since 1970
   Origin origin{Origin::measured};
+  Purpose purpose{Purpose::board};
   std::string operator_name;        ///< empty = not logged in
   std::string program;              ///< name and version
   std::string depth;                ///< "full" or "short", and why

@@ -3,9 +3,9 @@
 #include <algorithm>
 #include <cmath>
 
+#include "db/counts.hpp"
 #include "db/digest.hpp"
 #include "db/journal.hpp"
-#include "db/speaks.hpp"
 
 namespace jigwright {
 namespace {
@@ -150,11 +150,12 @@ void TrialWriter::insert_open(const TrialStart& start, OpenTrial& open, int atte
     open.attempt = static_cast<int>(db_.first("SELECT count(*) FROM trial WHERE board = ?", on).value_or(0)) + 1;
   db_.run(
       "INSERT INTO trial(uuid, board, ord, station, nest, at_us, state, judgement, void_reason, origin, attempt, "
-      "counts, setup, revision, operator, depth) VALUES(?, ?, ?, ?, ?, ?, 0, 2, ?, ?, ?, 0, ?, ?, ?, ?)",
+      "counts, setup, revision, operator, depth, purpose) VALUES(?, ?, ?, ?, ?, ?, 0, 2, ?, ?, ?, 0, ?, ?, ?, ?, ?)",
       Blob{bytes(open.uuid)}, on, ord, at, start.nest, start.at_us, killed, static_cast<int>(start.origin),
-      open.attempt, setup_ ? setup_->setup : 0, setup_ ? setup_->revision : 0, who, start.depth);
+      open.attempt, setup_ ? setup_->setup : 0, setup_ ? setup_->revision : 0, who, start.depth,
+      static_cast<int>(start.purpose));
   open.id = db_.last_id();
-  settle_counts(on);
+  settle_counts(db_, on);
 }
 
 Result<Done> TrialWriter::finish(const OpenTrial& open, const TrialEnd& end) {
@@ -183,7 +184,7 @@ std::vector<Bodies::Row> TrialWriter::write_end(const OpenTrial& open, const Tri
                                                 const std::vector<Id>& metrics) {
   close(open, end, tally, applied(end.findings, metrics));
   std::vector<Bodies::Row> findings = insert_findings(open, end.findings, metrics);
-  settle_counts(db_.first("SELECT board FROM trial WHERE id = ?", open.id).value_or(0));
+  settle_counts(db_, db_.first("SELECT board FROM trial WHERE id = ?", open.id).value_or(0));
   return findings;
 }
 
@@ -349,24 +350,6 @@ TrialWriter::Id TrialWriter::reduction(const std::vector<std::pair<std::string, 
   }
   if (!db_.failed()) reduction_.emplace(digest, *id);
   return *id;
-}
-
-void TrialWriter::settle_counts(Id board) {
-  std::vector<Id> ids;
-  std::vector<PastTrial> trials;
-  Id held = 0;
-  {
-    Query q = db_.query("SELECT id, judgement, counts FROM trial WHERE board = ? ORDER BY id", board);
-    while (q.next()) {
-      ids.push_back(q.integer(0));
-      trials.push_back({static_cast<Judgement>(q.integer(1)), false});
-      if (q.integer(2) != 0) held = ids.back();
-    }
-  }
-  const auto speaks = speaking_trial(trials);
-  if (!speaks || ids[*speaks] == held) return;
-  db_.run("UPDATE trial SET counts = 0 WHERE id = ?", held);
-  db_.run("UPDATE trial SET counts = 1 WHERE id = ?", ids[*speaks]);
 }
 
 /// The row's own hash, until a record covers it.

@@ -69,7 +69,6 @@ class TrialWriter {
                                            const std::vector<Id>& metrics);
   void insert_applied_limit(Id applied, Id metric, const Limit& limit);
   void close(const OpenTrial& open, const TrialEnd& end, const Tally& tally, Id applied);
-  void settle_counts(Id board);
   void mark(const OpenTrial& open);
   void journal(const OpenTrial& open, const TrialEnd& end, std::vector<Bodies::Row> findings);
   void forget();

@@ -55,8 +55,9 @@ std::string page(const AuditReport& report, const std::string& store) {
   std::string out = printable(store);
   out += report.whole() ? ": whole. Every record is as it was made.\n"
                         : fmt::format(": NOT as recorded: {}.\n", count(report.found, "difference"));
-  out += fmt::format("Checked: {} ({}, {}), {}, the file, its schema.\n", count(report.records, "record"),
-                     count(report.trials, "trial"), count(report.lists, "list"), count(report.findings, "finding"));
+  out += fmt::format("Checked: {} ({}, {}, {}), {}, the file, its schema.\n", count(report.records, "record"),
+                     count(report.trials, "trial"), count(report.lists, "list"), count(report.acts, "act"),
+                     count(report.findings, "finding"));
   if (report.open > 0)
     out +=
         count(report.open, "trial") +
@@ -122,6 +123,7 @@ std::string render(const AuditReport& report, const std::string& store, bool jso
   out["records"] = report.records;
   out["trials"] = report.trials;
   out["lists"] = report.lists;
+  out["acts"] = report.acts;
   out["findings"] = report.findings;
   out["open_trials"] = report.open;
   out["archived_readings"] = report.archived;

@@ -31,7 +31,7 @@ AuditReport differing() {
 TEST_CASE("the page of a whole store says so and ends with each chain's head") {
   CHECK(render(whole(), "results.db", false) ==
         "results.db: whole. Every record is as it was made.\n"
-        "Checked: 3 records (1 trial, 1 list), 40 findings, the file, its schema.\n"
+        "Checked: 3 records (1 trial, 1 list, 0 acts), 40 findings, the file, its schema.\n"
         "Note this elsewhere: a chain that is cut off later, rows and all, shows only beside it.\n"
         "  station bench 1, epoch 1, record 3, 2026-01-09T12:00:00Z:\n"
         "    abababababababababababababababababababababababababababababababab\n");

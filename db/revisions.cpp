@@ -1,0 +1,133 @@
+#include "db/revisions.hpp"
+
+#include <fmt/format.h>
+
+#include <charconv>
+
+#include "db/digest.hpp"
+#include "db/sqlite.hpp"
+
+namespace jigwright {
+namespace {
+
+using Id = std::int64_t;
+
+std::string value(const Act& act, const std::string& key) {
+  const auto found = act.values.find(key);
+  return found == act.values.end() ? std::string() : found->second;
+}
+
+Adopted adopted(const Act& act) {
+  Adopted out;
+  const std::string number = value(act, "number");
+  std::from_chars(number.data(), number.data() + number.size(), out.number);
+  out.order = act.about;
+  out.plan = value(act, "plan");
+  out.jig = value(act, "jig");
+  out.limits = value(act, "limits");
+  out.parent = value(act, "parent");
+  out.authority = value(act, "authority");
+  out.earlier_stand = value(act, "earlier trials") != "again";
+  out.who = act.who;
+  out.second = act.second;
+  out.reason = act.reason;
+  out.at_us = act.at_us;
+  out.uuid = act.uuid;
+  return out;
+}
+
+void keep_document(Database& database, const std::string& kind, const std::string& text) {
+  database.run("INSERT OR IGNORE INTO document(sha256, kind, name, body) VALUES(?, ?, ?, ?)", Blob{sha256(text)}, kind,
+               kind + ".toml", text);
+}
+
+/// The hash of the set-up's document of a kind, in hex digits.
+std::string document_of(Database& database, Id setup, const char* kind) {
+  Query q = database.query(
+      "SELECT d.sha256 FROM setup_document s JOIN document d ON d.id = s.document WHERE s.setup = ? AND d.kind = ?",
+      setup, kind);
+  return q.next() ? hex(q.text(0)) : std::string();
+}
+
+}  // namespace
+
+std::vector<Adopted> all_adopted(Database& database) {
+  std::vector<Adopted> out;
+  for (const Act& act : acts_of(database, "adopt")) out.push_back(adopted(act));
+  return out;
+}
+
+std::optional<Adopted> adopted_for(Database& database, const std::string& order) {
+  std::optional<Adopted> own, general;
+  for (Adopted& a : all_adopted(database)) {
+    if (a.order.empty())
+      general = std::move(a);
+    else if (a.order == order)
+      own = std::move(a);
+  }
+  return own ? own : general;
+}
+
+Result<Adopted> adopt(Database& database, UuidMaker& uuids, const Adopting& adopting) {
+  Transaction transaction(database, Transaction::Kind::write);
+  const auto before = adopted_for(database, adopting.order);
+  const bool same_scope = before && before->order == adopting.order;
+  if (same_scope && differing(*before, adopting.files).empty())
+    return Error{Error::Kind::usage,
+                 fmt::format("these files are in force already, as revision {}", before->number),
+                 {},
+                 "nothing was changed"};
+  const auto all = all_adopted(database);
+  Act act;
+  act.kind = "adopt";
+  act.at_us = adopting.at_us;
+  act.station = adopting.station;
+  act.who = adopting.who;
+  act.second = adopting.second;
+  act.reason = adopting.reason;
+  act.about = adopting.order;
+  act.values["number"] = fmt::format("{}", all.empty() ? 1 : all.back().number + 1);
+  act.values["plan"] = hex(sha256(adopting.files.plan));
+  act.values["jig"] = hex(sha256(adopting.files.jig));
+  act.values["limits"] = hex(sha256(adopting.files.limits));
+  act.values["authority"] = adopting.station;
+  act.values["earlier trials"] = adopting.earlier_stand ? "stand" : "again";
+  if (before) act.values["parent"] = text(before->uuid);
+  keep_document(database, "plan", adopting.files.plan);
+  keep_document(database, "jig", adopting.files.jig);
+  keep_document(database, "limits", adopting.files.limits);
+  act.uuid = add_act(database, uuids, act);
+  if (const auto done = transaction.commit(); !done) return done.error();
+  return adopted(act);
+}
+
+bool is_withdrawn(Database& database, const std::string& order, Id trial, Id setup) {
+  const auto barring = database.first(
+      "SELECT 1 FROM act a JOIN act_value v ON v.act = a.id WHERE a.kind = 'adopt' AND (a.about IS NULL OR a.about = "
+      "?) "
+      "AND a.after_trial >= ? AND v.key = 'earlier trials' AND v.value = 'again' LIMIT 1",
+      order, trial);
+  if (!barring) return false;
+  // The first such revision, and every later one, may be the one that the trial was played with.
+  const auto first = database.first(
+      "SELECT min(a.id) FROM act a JOIN act_value v ON v.act = a.id WHERE a.kind = 'adopt' AND "
+      "(a.about IS NULL OR a.about = ?) AND a.after_trial >= ? AND v.key = 'earlier trials' AND v.value = 'again'",
+      order, trial);
+  return !database
+              .first(
+                  "SELECT 1 FROM act a JOIN act_value p ON p.act = a.id AND p.key = 'plan' JOIN act_value l ON "
+                  "l.act = a.id AND l.key = 'limits' WHERE a.kind = 'adopt' AND (a.about IS NULL OR a.about = ?) AND "
+                  "a.id >= ? AND p.value = ? AND l.value = ? LIMIT 1",
+                  order, first, document_of(database, setup, "plan"), document_of(database, setup, "limits"))
+              .has_value();
+}
+
+std::string differing(const Adopted& adopted, const RevisionFiles& files) {
+  std::vector<std::string> names;
+  if (adopted.plan != hex(sha256(files.plan))) names.emplace_back("plan");
+  if (adopted.jig != hex(sha256(files.jig))) names.emplace_back("jig");
+  if (adopted.limits != hex(sha256(files.limits))) names.emplace_back("limits");
+  return fmt::format("{}", fmt::join(names, " and "));
+}
+
+}  // namespace jigwright
