@@ -4,6 +4,7 @@
 #include "db/counts.hpp"
 #include "db/digest.hpp"
 #include "db/journal.hpp"
+#include "db/people.hpp"
 #include "db/sqlite.hpp"
 
 namespace jigwright {
@@ -26,10 +27,10 @@ Id board(Database& database, const std::string& serial) {
 }
 
 /// Columns: id, uuid, kind, at_us, station, who, second, reason, about, ends, trial.
-std::vector<Act> read(Database& database, Query q) {
-  std::vector<Act> out;
+std::vector<ActRecord> read(Database& database, Query q) {
+  std::vector<ActRecord> out;
   while (q.next()) {
-    Act act;
+    ActRecord act;
     const Id id = q.integer(0);
     act.uuid = uuid_from_bytes(q.text(1)).value_or(Uuid{});
     act.kind = q.text(2);
@@ -53,7 +54,7 @@ std::vector<Act> read(Database& database, Query q) {
 
 }  // namespace
 
-Uuid add_act(Database& database, UuidMaker& uuids, const Act& act) {
+Uuid add_act(Database& database, UuidMaker& uuids, const ActRecord& act) {
   const Uuid uuid = uuids.next(act.at_us / 1000);
   const Id station = station_row(database, uuids, act.station, act.at_us);
   database.run(
@@ -76,23 +77,24 @@ void settle_after(Database& database, std::string_view uuid) {
   const auto board = database.first(
       "SELECT t.board FROM act a JOIN trial t ON t.uuid = a.trial WHERE a.uuid = ? AND a.kind = 'review'", Blob{uuid});
   if (board) settle_counts(database, *board);
+  settle_person(database, uuid);
 }
 
-Result<Uuid> write_act(Database& database, UuidMaker& uuids, const Act& act) {
+Result<Uuid> write_act(Database& database, UuidMaker& uuids, const ActRecord& act) {
   Transaction transaction(database, Transaction::Kind::write);
   const Uuid uuid = add_act(database, uuids, act);
   if (const auto done = transaction.commit(); !done) return done.error();
   return uuid;
 }
 
-std::vector<Act> acts_of(Database& database, const std::string& kind) {
+std::vector<ActRecord> acts_of(Database& database, const std::string& kind) {
   return read(database, database.query("SELECT a.id, a.uuid, a.kind, a.at_us, s.name, a.who, a.second, a.reason, "
                                        "a.about, a.ends, a.trial FROM act a "
                                        "JOIN station s ON s.id = a.station WHERE a.kind = ? ORDER BY a.id",
                                        kind));
 }
 
-std::vector<Act> acts_on(Database& database, const std::string& serial) {
+std::vector<ActRecord> acts_on(Database& database, const std::string& serial) {
   return read(database, database.query(
                             "SELECT a.id, a.uuid, a.kind, a.at_us, s.name, a.who, a.second, a.reason, a.about, a.ends, "
                             "a.trial FROM act a JOIN station s ON s.id = a.station WHERE a.id IN (SELECT x.act FROM "
@@ -101,7 +103,7 @@ std::vector<Act> acts_on(Database& database, const std::string& serial) {
                             serial));
 }
 
-std::optional<Act> last_act(Database& database, const std::string& kind, const std::string& about) {
+std::optional<ActRecord> last_act(Database& database, const std::string& kind, const std::string& about) {
   auto found = read(
       database,
       database.query(

@@ -17,7 +17,7 @@ namespace jigwright {
 
 class Database;
 
-struct Act {
+struct ActRecord {
   Uuid uuid{};                                ///< given when it is written
   std::string kind;                           ///< "hold"
   std::int64_t at_us{};                       ///< UTC
@@ -34,20 +34,20 @@ struct Act {
 
 /// Writes the act and its record, in the caller's transaction; boards that the store does not know become known.
 /// @return its uuid; a failure sticks to the database
-Uuid add_act(Database& database, UuidMaker& uuids, const Act& act);
+Uuid add_act(Database& database, UuidMaker& uuids, const ActRecord& act);
 
 /// What follows from an act that has just been written, in the caller's transaction: a review makes another trial speak
-/// for its board.
+/// for its board, a person's rights become what it says.
 void settle_after(Database& database, std::string_view uuid);
 
 /// add_act() as a transaction of its own. Error kind store.
-Result<Uuid> write_act(Database& database, UuidMaker& uuids, const Act& act);
+Result<Uuid> write_act(Database& database, UuidMaker& uuids, const ActRecord& act);
 
 /// Acts of a kind, oldest first. In the caller's transaction.
-std::vector<Act> acts_of(Database& database, const std::string& kind);
+std::vector<ActRecord> acts_of(Database& database, const std::string& kind);
 /// Acts that list the board, or are about one of its trials, oldest first.
-std::vector<Act> acts_on(Database& database, const std::string& serial);
+std::vector<ActRecord> acts_on(Database& database, const std::string& serial);
 /// The newest of a kind about something; empty `about` = about anything.
-std::optional<Act> last_act(Database& database, const std::string& kind, const std::string& about = {});
+std::optional<ActRecord> last_act(Database& database, const std::string& kind, const std::string& about = {});
 
 }  // namespace jigwright

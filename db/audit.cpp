@@ -12,6 +12,7 @@
 #include "db/bodies.hpp"
 #include "db/digest.hpp"
 #include "db/journal.hpp"
+#include "db/people.hpp"
 #include "db/schema.hpp"
 #include "db/speaks.hpp"
 #include "db/sqlite.hpp"
@@ -60,6 +61,7 @@ class Audit {
   void check_counts();
   void count(Sql held, std::int64_t recorded, const char* what);
   void none(Sql first, const char* what);
+  void check_people();
   void check_meta();
 
   Database& db_;
@@ -71,7 +73,7 @@ class Audit {
   std::map<Id, Sha256> entry_hashes_;
   std::set<Id> entries_seen_;
   bool unreadable_{false};
-  std::int64_t readings_{0}, epochs_{0}, archives_{0}, orders_{0}, builds_{0}, reels_{0}, feeds_{0};
+  std::int64_t readings_{0}, epochs_{0}, archives_{0}, orders_{0}, builds_{0}, reels_{0}, feeds_{0}, dropped_{0};
 };
 
 /// Once the store can't be read any further, what is missing is no news.
@@ -299,6 +301,7 @@ void Audit::check_entered(const Link& link) {
   builds_ += entry.builds;
   reels_ += entry.reels;
   feeds_ += entry.feeds;
+  dropped_ += entry.dropped;
 }
 
 /// Every trial has its records, and the one that speaks for a board is the one that does.
@@ -365,7 +368,12 @@ void Audit::check_counts() {
   count("SELECT count(*) FROM build", builds_, "build places");
   count("SELECT count(*) FROM reel", reels_, "reels");
   count("SELECT count(*) FROM feed", feeds_, "feeds");
-  none("SELECT designator FROM feed WHERE dropped_us IS NOT NULL", "a feed is dropped, and no record says so");
+  count("SELECT count(*) FROM feed WHERE dropped_us IS NOT NULL", dropped_, "feeds taken back");
+  none(
+      "SELECT c.name FROM credential c WHERE NOT EXISTS(SELECT 1 FROM act a WHERE a.kind = 'person' AND "
+      "a.about = c.name)",
+      "a person that no record names");
+  check_people();
   none(
       "SELECT serial FROM board b WHERE NOT EXISTS(SELECT 1 FROM build WHERE board = b.id) AND "
       "NOT EXISTS(SELECT 1 FROM trial WHERE board = b.id) AND NOT EXISTS(SELECT 1 FROM act_board WHERE board = b.id)",
@@ -375,6 +383,15 @@ void Audit::check_counts() {
       "SELECT ord FROM trial WHERE ord IS NOT NULL)",
       "an order that no record names");
   none("SELECT maker FROM lot WHERE id NOT IN (SELECT lot FROM reel)", "a lot that no record names, by its maker");
+}
+
+/// Role, badge and password are what the last record of the person says.
+void Audit::check_people() {
+  Query q = db_.query("SELECT name, role, badge, password, gone FROM credential");
+  while (q.next()) {
+    const PersonNow held{q.text(0), q.text(1), q.text(2), q.text(3), q.integer(4) != 0};
+    if (!is_as_recorded(db_, held)) differs(fmt::format("{} may do other than was recorded", held.name));
+  }
 }
 
 void Audit::check_meta() {

@@ -344,6 +344,9 @@ std::map<Bodies::Id, Bodies::Entry> Bodies::entered(Id first, Id last, const Sin
                  "WHERE f.entered BETWEEN ? AND ? ORDER BY f.uuid",
                  first, last),
        'f', 11, &Entry::feeds);
+  take(db_.query("SELECT dropped_by, uuid, dropped_us FROM feed WHERE dropped_by BETWEEN ? AND ? ORDER BY uuid", first,
+                 last),
+       'd', 2, &Entry::dropped);
   return out;
 }
 

@@ -64,7 +64,7 @@ class Bodies {
   const std::vector<const Part*>& parts() const { return parts_; }
 
   struct Entry {
-    std::int64_t orders{}, builds{}, reels{}, feeds{};  ///< rows
+    std::int64_t orders{}, builds{}, reels{}, feeds{}, dropped{};  ///< rows
   };
   /// Gets the body of a list's record piece by piece: which row of `entered`, and the next bytes of its body.
   using Sink = std::function<void(Id, std::string_view)>;

@@ -201,6 +201,9 @@ void Replay::write_row(char table, CanonicalReader& r, Id entry) {
         "known_us, entered) VALUES(?, ?, ?, (SELECT id FROM reel WHERE name = ?), ?, ?, ?, ?, ?, ?, ?, ?)",
         Blob{uuid}, in, designator, reel, poss_from, cert_from, cert_to, poss_to, repair, since_us, r.integer_column(),
         entry);
+  } else if (table == 'd') {
+    const std::string uuid = r.blob_column();
+    db_.run("UPDATE feed SET dropped_us = ?, dropped_by = ? WHERE uuid = ?", r.integer_column(), entry, Blob{uuid});
   } else {
     r.fail();  // the record's hash will not come out
   }

@@ -12,12 +12,12 @@ namespace {
 
 using Id = std::int64_t;
 
-std::string value(const Act& act, const std::string& key) {
+std::string value(const ActRecord& act, const std::string& key) {
   const auto found = act.values.find(key);
   return found == act.values.end() ? std::string() : found->second;
 }
 
-Adopted adopted(const Act& act) {
+Adopted adopted(const ActRecord& act) {
   Adopted out;
   const std::string number = value(act, "number");
   std::from_chars(number.data(), number.data() + number.size(), out.number);
@@ -53,7 +53,7 @@ std::string document_of(Database& database, Id setup, const char* kind) {
 
 std::vector<Adopted> all_adopted(Database& database) {
   std::vector<Adopted> out;
-  for (const Act& act : acts_of(database, "adopt")) out.push_back(adopted(act));
+  for (const ActRecord& act : acts_of(database, "adopt")) out.push_back(adopted(act));
   return out;
 }
 
@@ -78,7 +78,7 @@ Result<Adopted> adopt(Database& database, UuidMaker& uuids, const Adopting& adop
                  {},
                  "nothing was changed"};
   const auto all = all_adopted(database);
-  Act act;
+  ActRecord act;
   act.kind = "adopt";
   act.at_us = adopting.at_us;
   act.station = adopting.station;

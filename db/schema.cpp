@@ -217,6 +217,13 @@ CREATE INDEX act_board_board ON act_board(board);
 CREATE TABLE act_value(
   act INTEGER NOT NULL REFERENCES act, key TEXT NOT NULL, value TEXT NOT NULL, PRIMARY KEY(act, key)) STRICT,
   WITHOUT ROWID;
+-- Who may do what, from the acts of kind "person"; password: Argon2id as libsodium writes it, in no record.
+CREATE TABLE credential(
+  name TEXT PRIMARY KEY, role TEXT NOT NULL, badge TEXT UNIQUE, password TEXT, gone INTEGER NOT NULL) STRICT,
+  WITHOUT ROWID;
+-- A feed that a later record took back.
+ALTER TABLE feed ADD COLUMN dropped_by INTEGER REFERENCES entered;
+CREATE INDEX feed_dropped ON feed(dropped_by) WHERE dropped_by IS NOT NULL;
 -- purpose: 0 a board of an order, 1 the jig's check, 2 a reference board, 3 a reject sample.
 ALTER TABLE trial ADD COLUMN purpose INTEGER NOT NULL DEFAULT 0;
 -- One metric's findings over 512 trials, ids 512 * stretch + 1 to 512 * stretch + 512: derived, see columns.hpp.

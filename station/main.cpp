@@ -9,6 +9,7 @@
 #include "base/source.hpp"
 #include "sequencer/station_file.hpp"
 #include "station/commands.hpp"
+#include "station/desk.hpp"
 #include "station/exit_codes.hpp"
 #include "station/recompute.hpp"
 
@@ -130,6 +131,8 @@ int main(int argc, char** argv) {
       ->required();
   archive_command->add_option("--operator", archiving.operator_name, "who archives, for the record");
 
+  DeskCommands desk(app);
+
   try {
     app.parse(argc, argv);
   } catch (const CLI::ParseError& error) {
@@ -156,6 +159,7 @@ int main(int argc, char** argv) {
     return exit_files;
   }
   if (store.empty()) store = station->store;
+  if (const auto code = desk.run(*station, store)) return *code;
   if (*try_command) {
     if (trying.serial.empty() && trying.order.empty()) {
       fmt::print(stderr, "jigwright: try: name --serial S or --order O\n");
