@@ -200,7 +200,7 @@ std::optional<TrialBody> Bodies::read(std::string_view uuid, bool check, bool fi
       "SELECT t.id, t.station, b.serial, t.state, t.mark, t.setup, t.revision, t.applied, t.equipment, t.reduction, "
       "t.deciding_metric, t.worst_metric, t.nogo, t.worst_margin, "
       "t.uuid, b.serial, t.nest, t.at_us, t.origin, t.attempt, t.depth, o.name, p.name, t.state, t.took_ms, "
-      "t.judgement, t.void_reason, t.ambient_degC, t.unsafe, t.nogo, t.worst_margin, t.purpose "
+      "t.judgement, t.void_reason, t.ambient_degC, t.unsafe, t.nogo, t.worst_margin, t.purpose, t.adopted "
       "FROM trial t JOIN board b ON b.id = t.board LEFT JOIN product_order o ON o.id = t.ord "
       "LEFT JOIN person p ON p.id = t.operator WHERE t.uuid = ?",
       Blob{uuid});
@@ -214,7 +214,7 @@ std::optional<TrialBody> Bodies::read(std::string_view uuid, bool check, bool fi
   if (findings) read_findings(out.id);
   body_.clear();
   parts_.clear();
-  add_columns(body_, q, 14, 32);
+  add_columns(body_, q, 14, 33);
   for (const Part* part : {&station(out.station), &setup(q.integer(5)), &revision(q.integer(6)), &applied(q.integer(7)),
                            &equipment(q.integer(8)), &reduction(q.integer(9))})
     name(*part);

@@ -216,6 +216,7 @@ ShownTrial shown_trial(const Query& q) {
   out.unsafe = q.text(18);
   out.ambient_C = q.maybe_real(19);
   out.missed = static_cast<int>(q.integer(20));
+  out.adopted = q.maybe_integer(24);
   if (!q.null(21)) out.deciding = label({q.text(21), q.text(22), q.text(23)});
   return out;
 }
@@ -226,7 +227,7 @@ std::vector<ShownTrial> trials_of(Database& database, const std::string& serial)
   Query q = database.query(
       "SELECT t.id, t.uuid, t.attempt, t.counts, t.state, t.origin, t.at_us, t.took_ms, p.name, s.name, t.nest, "
       "u.program, u.plan, v.limit_set, v.number, t.depth, t.judgement, t.void_reason, t.unsafe, t.ambient_degC, "
-      "t.nogo, m.step, m.name, m.variant FROM board b JOIN trial t ON t.board = b.id "
+      "t.nogo, m.step, m.name, m.variant, t.adopted FROM board b JOIN trial t ON t.board = b.id "
       "JOIN station s ON s.id = t.station JOIN setup u ON u.id = t.setup JOIN revision v ON v.id = t.revision "
       "LEFT JOIN person p ON p.id = t.operator LEFT JOIN metric m ON m.id = t.deciding_metric "
       "WHERE b.serial = ? ORDER BY t.id",

@@ -74,6 +74,7 @@ struct ShownTrial {
   std::string operator_name, station, program, plan, limit_set, depth;
   int nest{};
   std::int64_t limit_revision{};
+  std::optional<std::int64_t> adopted;  ///< as TrialStart's
   Judgement judgement{Judgement::void_};
   std::string void_reason, unsafe;
   std::optional<std::string> deciding;  ///< label of the metric that decided

@@ -226,6 +226,8 @@ ALTER TABLE feed ADD COLUMN dropped_by INTEGER REFERENCES entered;
 CREATE INDEX feed_dropped ON feed(dropped_by) WHERE dropped_by IS NOT NULL;
 -- purpose: 0 a board of an order, 1 the jig's check, 2 a reference board, 3 a reject sample.
 ALTER TABLE trial ADD COLUMN purpose INTEGER NOT NULL DEFAULT 0;
+-- Number of the revision that was in force; 0 = it was played with other files; NULL = none was in force.
+ALTER TABLE trial ADD COLUMN adopted INTEGER;
 -- One metric's findings over 512 trials, ids 512 * stretch + 1 to 512 * stretch + 512: derived, see columns.hpp.
 CREATE TABLE column_block(
   metric INTEGER NOT NULL REFERENCES metric, stretch INTEGER NOT NULL, body BLOB NOT NULL,

@@ -81,6 +81,10 @@ Result<Done> Store::drive(const std::string& station, std::int64_t now_us) {
   return Done{};
 }
 
+Result<Done> Store::take_station(const std::string& station) {
+  return drive(station, utc_us());
+}
+
 Result<OpenTrial> Store::begin_trial(const TrialStart& start) {
   if (const auto damage = keeper_->damage()) return *damage;
   if (const auto driven = drive(start.station, start.at_us); !driven) return driven.error();

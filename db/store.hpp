@@ -41,6 +41,8 @@ class Store final : public TrialLog {
   /// gives trials that were cut short their record. Error kind store: another program drives the station, the store is
   /// damaged, its disk is nearly full.
   Result<OpenTrial> begin_trial(const TrialStart& start) override;
+  /// That first part alone, before a board is there.
+  Result<Done> take_station(const std::string& station);
   Result<Done> finish_trial(const OpenTrial& open, const TrialEnd& end) override;
 
   /// Copies of records, and a backup on a thread of its own when one is due.

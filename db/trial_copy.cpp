@@ -83,6 +83,7 @@ class Reading {
     out_.missed = static_cast<int>(body_.integer_column());
     out_.worst_margin = body_.maybe_real_column();
     start.purpose = static_cast<Purpose>(body_.integer_column());
+    start.adopted = body_.maybe_integer_column();
     if (bytes(out_.uuid) != record_.uuid || out_.state == TrialState::open) failed_ = true;
   }
 

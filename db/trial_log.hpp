@@ -12,7 +12,8 @@ namespace jigwright {
 struct OpenTrial {
   std::int64_t id{};  ///< inside the store only
   Uuid uuid{};
-  int attempt{1};  ///< trials of the board so far, this one counted
+  int attempt{1};                       ///< trials of the board so far, this one counted
+  std::optional<std::int64_t> adopted;  ///< as TrialStart's
 };
 
 class TrialLog {

@@ -44,6 +44,8 @@ struct TrialStart {
   std::string plan;                 ///< the plan's id
   std::string limit_set;            ///< the limit set's id
   std::int64_t limit_revision{};
+  /// Number of the adopted revision in force; 0 = played with other files; empty = none is in force. The store says.
+  std::optional<std::int64_t> adopted;
 };
 
 /// One metric of the trial: its name, limit and what was found.

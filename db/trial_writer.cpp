@@ -6,6 +6,7 @@
 #include "db/counts.hpp"
 #include "db/digest.hpp"
 #include "db/journal.hpp"
+#include "db/revisions.hpp"
 
 namespace jigwright {
 namespace {
@@ -60,12 +61,28 @@ Result<OpenTrial> TrialWriter::begin(const TrialStart& start) {
   OpenTrial open;
   open.uuid = uuids_.next(start.at_us / 1000);
   settle_setup(start);
-  insert_open(start, open);
+  TrialStart with = start;
+  with.adopted = adopted(start);
+  insert_open(with, open);
   mark(open);
+  open.adopted = with.adopted;
   const auto done = transaction.commit();
   if (done) return open;
   forget();
   return done.error();
+}
+
+std::optional<std::int64_t> TrialWriter::adopted(const TrialStart& start) {
+  if (!db_.first("SELECT 1 FROM act WHERE kind = 'adopt' LIMIT 1")) return std::nullopt;
+  const auto in_force = adopted_for(db_, start.order);
+  if (!in_force) return std::nullopt;
+  RevisionFiles files;
+  for (const Document& d : start.documents) {
+    if (d.kind == "plan") files.plan = d.text;
+    if (d.kind == "jig") files.jig = d.text;
+    if (d.kind == "limits") files.limits = d.text;
+  }
+  return differing(*in_force, files).empty() ? in_force->number : 0;
 }
 
 void TrialWriter::check_origin(const TrialStart& start) {
@@ -150,10 +167,11 @@ void TrialWriter::insert_open(const TrialStart& start, OpenTrial& open, int atte
     open.attempt = static_cast<int>(db_.first("SELECT count(*) FROM trial WHERE board = ?", on).value_or(0)) + 1;
   db_.run(
       "INSERT INTO trial(uuid, board, ord, station, nest, at_us, state, judgement, void_reason, origin, attempt, "
-      "counts, setup, revision, operator, depth, purpose) VALUES(?, ?, ?, ?, ?, ?, 0, 2, ?, ?, ?, 0, ?, ?, ?, ?, ?)",
+      "counts, setup, revision, operator, depth, purpose, adopted) VALUES(?, ?, ?, ?, ?, ?, 0, 2, ?, ?, ?, 0, ?, ?, ?, "
+      "?, ?, ?)",
       Blob{bytes(open.uuid)}, on, ord, at, start.nest, start.at_us, killed, static_cast<int>(start.origin),
       open.attempt, setup_ ? setup_->setup : 0, setup_ ? setup_->revision : 0, who, start.depth,
-      static_cast<int>(start.purpose));
+      static_cast<int>(start.purpose), start.adopted);
   open.id = db_.last_id();
   settle_counts(db_, on);
 }

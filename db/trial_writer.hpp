@@ -44,6 +44,7 @@ class TrialWriter {
     std::optional<Id> deciding, worst;
     std::optional<double> worst_margin;
   };
+  std::optional<std::int64_t> adopted(const TrialStart& start);
   void check_origin(const TrialStart& start);
   Id board(const std::string& serial);
   Id order(const std::string& name);

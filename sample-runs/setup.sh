@@ -1,7 +1,7 @@
 # Sourced by first-run.sh and tests/run.sh: installs what is missing, and nothing else.
 
 build_packages="g++ cmake ninja-build ccache pkg-config libboost1.81-dev libtomlplusplus-dev libsqlite3-dev libfmt-dev
-  libcli11-dev nlohmann-json3-dev libsodium-dev"
+  libcli11-dev nlohmann-json3-dev libsodium-dev libzint-dev"
 
 # need_packages NAME ...: Debian packages, by apt-get when one is missing (asks for root through sudo).
 need_packages() {

@@ -9,9 +9,17 @@
 #include "base/source.hpp"
 #include "fixtures/jig.hpp"
 #include "limits/limit.hpp"
+#include "sequencer/serial.hpp"
 #include "steps/step.hpp"
 
 namespace jigwright {
+
+/// How the line treats boards under this plan.
+struct LineRules {
+  int retests{1};         ///< trials after the first, until a repair or an engineer's leave; a VOID counts
+  int stop_after{3};      ///< NO-GO or VOID in a row with the same cause stop the line
+  int first_articles{0};  ///< first boards of an order whose records an engineer approves before the line goes on
+};
 
 struct Plan {
   std::string id;  ///< "bridge-amplifier-sweep"
@@ -19,6 +27,8 @@ struct Plan {
   std::string jig_file;  ///< resolved against the plan's folder
   std::string limits_file;
   BoardFacts board;
+  SerialForm serial;
+  LineRules line;
   bool stop_at_first_miss{false};
   double time_limit_s{};  ///< a trial longer than this is ended as VOID
   std::vector<std::unique_ptr<Step>> steps;

@@ -42,6 +42,7 @@ class PlanReader {
   Plan read() {
     read_head();
     read_board();
+    read_line();
     read_steps();
     root_.finish();
     check_power();
@@ -49,6 +50,19 @@ class PlanReader {
   }
 
  private:
+  void read_line() {
+    if (root_.has("serial"))
+      if (const Node* node = root_.need_table("serial")) plan_.serial = read_serial_form(*node, faults_);
+    if (!root_.has("line")) return;
+    const Node* node = root_.need_table("line");
+    if (node == nullptr) return;
+    TableReader r(*node, "[line]", faults_);
+    if (const auto n = r.integer("retests", 0, 10)) plan_.line.retests = static_cast<int>(n->value);
+    if (const auto n = r.integer("stop_after", 2, 100)) plan_.line.stop_after = static_cast<int>(n->value);
+    if (const auto n = r.integer("first_articles", 0, 1000)) plan_.line.first_articles = static_cast<int>(n->value);
+    r.finish();
+  }
+
   void read_head() {
     const Node* node = root_.need_table("plan");
     if (node == nullptr) return;

@@ -12,6 +12,7 @@ namespace {
 class NullRecorder final : public Recorder {
  public:
   Task<Result<OpenTrial>> begin(const TrialStart&) override { co_return OpenTrial{}; }
+  Task<Result<Done>> write(std::function<Result<Done>()>) override { co_return Done{}; }
   Task<Result<Done>> finish(const OpenTrial&, const TrialEnd&) override { co_return Done{}; }
 };
 
@@ -23,6 +24,12 @@ class ThreadRecorder final : public Recorder {
   Task<Result<OpenTrial>> begin(const TrialStart& start) override {
     const Clock::Hold hold(clock_);
     co_return co_await on_thread<Result<OpenTrial>>([this, &start] { return log_.begin_trial(start); });
+  }
+  Task<Result<Done>> write(std::function<Result<Done>()> work) override {
+    const Clock::Hold hold(clock_);
+    Result<Done> done = co_await on_thread<Result<Done>>([&work] { return work(); });
+    asio::post(thread_, [this] { log_.upkeep(); });
+    co_return done;
   }
   Task<Result<Done>> finish(const OpenTrial& trial, const TrialEnd& end) override {
     const Clock::Hold hold(clock_);

@@ -2,6 +2,7 @@
 // calls block on the disk, so they run on a thread of their own, the only writer of the process; virtual time waits for
 // it.
 #pragma once
+#include <functional>
 #include <memory>
 
 #include "db/trial_log.hpp"
@@ -14,6 +15,8 @@ class Recorder {
   virtual ~Recorder() = default;
   /// @return the open trial, for finish()
   virtual Task<Result<OpenTrial>> begin(const TrialStart& start) = 0;
+  /// Any other write to the store, on the store's thread in its turn. The work must not touch what others use.
+  virtual Task<Result<Done>> write(std::function<Result<Done>()> work) = 0;
   /// Returns once the record is durable.
   virtual Task<Result<Done>> finish(const OpenTrial& trial, const TrialEnd& end) = 0;
 };

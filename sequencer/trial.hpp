@@ -49,6 +49,8 @@ class Trials {
   /// handler that runs on the io_context.
   void stop(std::string reason);
   bool stopped() const { return stop_.set; }
+  /// Whose trials the next ones are.
+  void sign(std::string operator_name) { setup_.operator_name = std::move(operator_name); }
 
  private:
   class Body;

@@ -28,6 +28,21 @@ struct TryOptions {
 };
 int try_boards(const TryOptions& options);
 
+struct LineOptions {
+  std::string plan, order, store, station_name, language, program;
+  std::vector<std::string> faults;                           ///< of the simulated jig
+  std::vector<std::pair<std::string, std::string>> answers;  ///< step, answer
+  std::uint64_t seed{1};
+  BackupPlan backups;
+  bool virtual_time{false};
+};
+int line(const LineOptions& options);
+
+struct CardsOptions {
+  std::string file, language;
+};
+int cards(const CardsOptions& options);
+
 struct LintOptions {
   std::string plan;
   bool json{false};

@@ -75,6 +75,18 @@ int main(int argc, char** argv) {
                         "one JSON event a line; questions are answered on standard input by {\"answer\": ...}");
   try_command->add_flag("--quiet", trying.quiet, "only the last line");
 
+  LineOptions lining;
+  auto* line_command = app.add_subcommand("line", "The operator's loop: scan, try, one clear word, next action");
+  line_command->add_option("PLAN", lining.plan, "plan file (default: the station's)");
+  line_command->add_option("--order", lining.order, "only boards of this order");
+  line_command->add_option("--fault", lining.faults, "a fault of the simulated jig; see \"jigwright faults\"");
+  line_command->add_option("--seed", lining.seed, "seed of the simulated jig's noise");
+  line_command->add_flag("--virtual-time", lining.virtual_time, "don't wait: scans come from a file");
+
+  CardsOptions carding;
+  auto* cards_command = app.add_subcommand("cards", "Print the line's code cards as a page (SVG)");
+  cards_command->add_option("FILE", carding.file, "file to write (default: standard output)");
+
   LintOptions linting;
   auto* lint_command = app.add_subcommand("lint", "Check plan, jig and limits, and show what the plan will do");
   lint_command->add_option("PLAN", linting.plan, "plan file")->required();
@@ -159,6 +171,20 @@ int main(int argc, char** argv) {
     return exit_files;
   }
   if (store.empty()) store = station->store;
+  lining.language = carding.language = station->language;
+  if (*cards_command) return cards(carding);
+  if (*line_command) {
+    if (lining.plan.empty()) lining.plan = station->plan;
+    if (lining.plan.empty()) {
+      fmt::print(stderr, "jigwright: line: name a plan, or write \"plan\" in the station file\n");
+      return exit_usage;
+    }
+    lining.store = store;
+    lining.station_name = station->name;
+    lining.backups = station->backups;
+    lining.program = "jigwright " JIGWRIGHT_VERSION;
+    return line(lining);
+  }
   if (const auto code = desk.run(*station, store)) return *code;
   if (*try_command) {
     if (trying.serial.empty() && trying.order.empty()) {

@@ -278,8 +278,11 @@ std::string trials_table(const BoardShown& shown) {
 
 /// "Trial 1: plan p, limits l rev 3, full; by A. Tester at bench 1, nest 1."
 std::string circumstances(const ShownTrial& t) {
-  return printable(fmt::format("Trial {}: plan {}, limits {} rev {}, {}; by {} at {}, nest {}.", t.attempt, t.plan,
-                               t.limit_set, t.limit_revision, t.depth,
+  const std::string adopted = !t.adopted        ? ""
+                              : *t.adopted == 0 ? ", NOT ADOPTED"
+                                                : fmt::format(", adopted as {}", *t.adopted);
+  return printable(fmt::format("Trial {}: plan {}, limits {} rev {}, {}{}; by {} at {}, nest {}.", t.attempt, t.plan,
+                               t.limit_set, t.limit_revision, t.depth, adopted,
                                t.operator_name.empty() ? "nobody logged in" : t.operator_name, t.station, t.nest)) +
          "\n" +
          (t.unsafe.empty() ? "" : fmt::format("Trial {} left unconfirmed: {}.\n", t.attempt, printable(t.unsafe)));
@@ -408,6 +411,7 @@ Json json_of(const ShownTrial& t) {
   out["plan"] = t.plan;
   out["limit_set"] = t.limit_set;
   out["revision"] = t.limit_revision;
+  out["adopted"] = t.adopted ? Json(*t.adopted) : Json(nullptr);
   out["depth"] = t.depth;
   out["took_ms"] = maybe(t.took_ms);
   out["operator"] = unless_empty(t.operator_name);

@@ -18,6 +18,7 @@ struct FailingRecorder final : Recorder {
   bool begin_fails{false}, finish_fails{false};
   int begun{0};
   static Error full() { return {Error::Kind::store, "the disk is full", "results.db", {}}; }
+  Task<Result<Done>> write(std::function<Result<Done>()>) override { co_return Done{}; }
   Task<Result<OpenTrial>> begin(const TrialStart&) override {
     ++begun;
     if (begin_fails) co_return full();
