@@ -10,6 +10,7 @@
 #include <utility>
 
 #include "db/bodies.hpp"
+#include "db/columns.hpp"
 #include "db/digest.hpp"
 #include "db/journal.hpp"
 #include "db/people.hpp"
@@ -97,6 +98,7 @@ AuditReport Audit::run() {
   check_trials();
   check_counts();
   check_meta();
+  check_blocks(db_, [this](std::string what) { differs(std::move(what)); });
   if (db_.failed()) differs({});
   return std::move(report_);
 }

@@ -14,6 +14,8 @@
 namespace jigwright {
 namespace {
 
+constexpr int built_at_once = 4;  ///< stretches after a trial: well below what the next board's handling takes
+
 bool missing(const std::string& path) {
   struct stat status {};
   return path != ":memory:" && ::stat(path.c_str(), &status) != 0;
@@ -29,6 +31,7 @@ std::int64_t utc_us() {
 Store::Store(std::unique_ptr<Database> database, const BackupPlan& backups)
     : database_(std::move(database)),
       writer_(std::make_unique<TrialWriter>(*database_, uuids_)),
+      columns_(*database_),
       keeper_(std::make_unique<Keeper>(*database_, backups)) {}
 
 Store::~Store() = default;
@@ -98,6 +101,7 @@ Result<Done> Store::finish_trial(const OpenTrial& open, const TrialEnd& end) {
 
 void Store::upkeep() {
   keeper_->tend(utc_us());
+  static_cast<void>(columns_.upkeep(built_at_once));
 }
 
 void Store::finish_upkeep() {

@@ -7,6 +7,7 @@
 #include <string>
 
 #include "db/backup.hpp"
+#include "db/columns.hpp"
 #include "db/enter.hpp"
 #include "db/questions.hpp"
 #include "db/station_lock.hpp"
@@ -45,7 +46,8 @@ class Store final : public TrialLog {
   Result<Done> take_station(const std::string& station);
   Result<Done> finish_trial(const OpenTrial& open, const TrialEnd& end) override;
 
-  /// Copies of records, and a backup on a thread of its own when one is due.
+  /// Copies of records, a backup on a thread of its own when one is due, and column blocks that are missing, a few at a
+  /// time (columns.hpp); blocks that could not be built are tried later.
   void upkeep() override;
   /// Waits for a backup under way, and copies the last records: before the program ends.
   void finish_upkeep();
@@ -75,6 +77,7 @@ class Store final : public TrialLog {
   UuidMaker uuids_;
   std::unique_ptr<Database> database_;
   std::unique_ptr<TrialWriter> writer_;
+  ColumnKeeper columns_;
   std::unique_ptr<Keeper> keeper_;
 };
 
