@@ -6,67 +6,14 @@
 #include <cmath>
 #include <nlohmann/json.hpp>
 
-#include "db/csv.hpp"
 #include "db/week.hpp"
+#include "station/tables.hpp"
 #include "station/words.hpp"
 
 namespace jigwright {
 namespace {
 
 using Json = nlohmann::ordered_json;
-using Cells = std::vector<std::string>;
-
-std::size_t width(std::string_view text) {
-  return static_cast<std::size_t>(
-      std::count_if(text.begin(), text.end(), [](char c) { return (static_cast<unsigned char>(c) & 0xc0u) != 0x80u; }));
-}
-
-/// Columns two spaces apart, the header first, indented by two; columns named in `right` end flush.
-class TextTable {
- public:
-  TextTable(Cells header, std::vector<bool> right) : right_(std::move(right)) { add(std::move(header)); }
-
-  void add(Cells row) {
-    for (std::string& cell : row) cell = printable(cell.empty() ? "-" : cell);
-    rows_.push_back(std::move(row));
-  }
-
-  std::string text() const {
-    std::vector<std::size_t> widths(rows_[0].size(), 0);
-    for (const Cells& row : rows_)
-      for (std::size_t i = 0; i < row.size(); ++i) widths[i] = std::max(widths[i], width(row[i]));
-    std::string out;
-    for (const Cells& row : rows_) out += line(row, widths);
-    return out;
-  }
-
- private:
-  std::string line(const Cells& row, const std::vector<std::size_t>& widths) const {
-    std::string out;
-    for (std::size_t i = 0; i < row.size(); ++i) {
-      const std::string pad(widths[i] - width(row[i]), ' ');
-      out += "  " + (right_[i] ? pad + row[i] : row[i] + pad);
-    }
-    out.erase(out.find_last_not_of(' ') + 1);
-    return out + "\n";
-  }
-
-  std::vector<bool> right_;
-  std::vector<Cells> rows_;
-};
-
-std::string csv_line(const Cells& cells) {
-  std::string out;
-  for (const std::string& cell : cells) out += (&cell == &cells[0] ? "" : ",") + csv_cell(cell);
-  return out + "\r\n";
-}
-
-std::string csv_number(std::optional<double> value) {
-  return value && std::isfinite(*value) ? fmt::format("{}", *value) : "";
-}
-std::string csv_count(std::optional<std::int64_t> value) {
-  return value ? std::to_string(*value) : "";
-}
 
 /// Texts that are not UTF-8 (a scanner may send anything) are shown with replacement characters.
 std::string dump(const Json& json) {
