@@ -1,6 +1,8 @@
 #include "base/summary.hpp"
 
+#include <algorithm>
 #include <cmath>
+#include <limits>
 
 namespace jigwright {
 
@@ -43,6 +45,15 @@ Summary summarize(std::span<const double> values) {
   s.mean += slip.value() / n;
   s.sd = std::sqrt((squares.value() - slip.value() * slip.value() / n) / (n - 1));
   return s;
+}
+
+double quantile(std::span<const double> sorted, double p) {
+  if (sorted.empty()) return std::numeric_limits<double>::quiet_NaN();
+  const double at = static_cast<double>(sorted.size() - 1) * std::clamp(p, 0.0, 1.0);
+  const auto below = static_cast<std::size_t>(at);
+  const double part = at - static_cast<double>(below);
+  if (!(part > 0)) return sorted[below];
+  return sorted[below] + part * (sorted[below + 1] - sorted[below]);
 }
 
 std::optional<double> lag1(std::span<const double> values) {

@@ -1,4 +1,4 @@
-// Means, spreads and straight lines, as both the steps and the limits need them. Pure; any thread.
+// Means, spreads, quantiles and straight lines, as both the steps and the limits need them. Pure; any thread.
 #pragma once
 #include <cstddef>
 #include <optional>
@@ -15,6 +15,13 @@ struct Summary {
 /// Two passes with the correction term of Chan, Golub and LeVeque, Am. Stat. 37 (1983) 242, eq. 1.7, summed with
 /// compensation; checked against the NIST StRD univariate sets.
 Summary summarize(std::span<const double> values);
+
+/// Straight between the two values beside position (n - 1) p, counted from 0: definition 7 of Hyndman and Fan,
+/// Am. Stat. 50 (1996) 361.
+/// @param sorted  rising
+/// @param p       0 = the least, 1 = the most
+/// @return NaN for no values
+double quantile(std::span<const double> sorted, double p);
 
 /// Lag-1 autocorrelation: sum (y[i]-m)(y[i+1]-m) / sum (y[i]-m)^2 (NIST/SEMATECH e-Handbook 1.3.5.12).
 /// nullopt for n < 2 or no spread.

@@ -1,10 +1,12 @@
-// `enter`, `trace`, `show`, `audit`, `log` and `faults`: lists in, answers out.
+// `enter`, `trace`, `show`, `spread`, `audit`, `log` and `faults`: lists in, answers out.
 #include <fmt/format.h>
 
+#include <cstdio>
 #include <limits>
 
 #include "db/enter.hpp"
 #include "db/questions.hpp"
+#include "db/spread.hpp"
 #include "db/store.hpp"
 #include "fixtures/simulated/simulated_bench.hpp"
 #include "station/audit_text.hpp"
@@ -12,6 +14,7 @@
 #include "station/exit_codes.hpp"
 #include "station/fail.hpp"
 #include "station/questions.hpp"
+#include "station/spread_text.hpp"
 
 namespace jigwright {
 namespace {
@@ -32,6 +35,19 @@ template <class T>
 int print_answer(const Result<T>& answer, Form form) {
   if (!answer.ok()) return fail(answer.error());
   fmt::print("{}", render(answer.value(), form));
+  return exit_go;
+}
+
+/// Row by row: a million of them need no memory.
+int spread_rows(Database& database, const SpreadAsked& asked) {
+  bool begun = false;
+  const auto done = each_spread_row(database, asked, [&](const KnownMetric& metric, const SpreadRow& row) {
+    if (!begun) std::fputs(spread_csv_header().c_str(), stdout);
+    begun = true;
+    std::fputs(spread_csv_line(metric, row).c_str(), stdout);
+  });
+  if (!done) return fail(done.error());
+  if (!begun) std::fputs(spread_csv_header().c_str(), stdout);
   return exit_go;
 }
 
@@ -79,6 +95,19 @@ int show(const ShowOptions& options) {
   auto store = for_reading(options.store);
   if (!store) return fail(store.error());
   return print_answer(show_board(store.value()->database(), options.serial), form(options.csv, options.json));
+}
+
+int spread(const SpreadOptions& options) {
+  auto store = for_reading(options.store);
+  if (!store) return fail(store.error());
+  Database& database = store.value()->database();
+  SpreadAsked asked{options.step, options.metric, {}, options.all_trials};
+  if (options.one_variant) asked.variant = options.variant;
+  if (options.csv && !options.json) return spread_rows(database, asked);
+  const auto answer = spread(database, asked);
+  if (!answer.ok()) return fail(answer.error());
+  fmt::print("{}", render(answer.value(), options.all_trials, options.json));
+  return exit_go;
 }
 
 int audit(const AuditOptions& options) {

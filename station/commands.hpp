@@ -72,6 +72,13 @@ struct ShowOptions {
 };
 int show(const ShowOptions& options);
 
+struct SpreadOptions {
+  std::string step, metric, variant, store;
+  bool one_variant{false};  ///< `variant` was given; it may be empty
+  bool all_trials{false}, csv{false}, json{false};
+};
+int spread(const SpreadOptions& options);
+
 struct AuditOptions {
   std::string store;
   bool json{false};

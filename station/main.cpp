@@ -114,6 +114,17 @@ int main(int argc, char** argv) {
   show_command->add_flag("--csv", showing.csv, "as CSV");
   show_command->add_flag("--json", showing.json, "as JSON");
 
+  SpreadOptions spreading;
+  auto* spread_command =
+      app.add_subcommand("spread", "How a metric's values spread over the boards, beside its limits");
+  spread_command->add_option("STEP", spreading.step, "the step's id")->required();
+  spread_command->add_option("METRIC", spreading.metric, "the metric's name, as `show` gives it")->required();
+  auto* spread_variant =
+      spread_command->add_option("VARIANT", spreading.variant, "one of its variants (default: each)");
+  spread_command->add_flag("--all-trials", spreading.all_trials, "retrials too, not only each board's first finding");
+  spread_command->add_flag("--csv", spreading.csv, "every finding as CSV");
+  spread_command->add_flag("--json", spreading.json, "as JSON");
+
   AuditOptions auditing;
   auto* audit_command = app.add_subcommand("audit", "Check that the store holds what was recorded, unchanged");
   audit_command->add_flag("--json", auditing.json, "as JSON");
@@ -197,7 +208,7 @@ int main(int argc, char** argv) {
     trying.program = "jigwright " JIGWRIGHT_VERSION;
     return try_boards(trying);
   }
-  entering.store = tracing.store = showing.store = auditing.store = logging.store = store;
+  entering.store = tracing.store = showing.store = spreading.store = auditing.store = logging.store = store;
   backing.store = restoring.store = archiving.store = store;
   entering.station_name = archiving.station_name = station->name;
   backing.backups = restoring.backups = entering.backups = station->backups;
@@ -213,5 +224,9 @@ int main(int argc, char** argv) {
   if (*archive_command) return archive(archiving);
   if (*log_command) return log(logging);
   if (*trace_command) return trace(tracing);
+  if (*spread_command) {
+    spreading.one_variant = spread_variant->count() > 0;
+    return spread(spreading);
+  }
   return show(showing);
 }

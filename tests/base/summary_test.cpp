@@ -149,3 +149,21 @@ TEST_CASE("two points make a line without residuals; fewer, or a single x, make 
   CHECK_FALSE(fit_line(same, y).has_value());
   CHECK_FALSE(fit_line(three, y).has_value());
 }
+
+TEST_CASE("quantiles of the NIST handbook's twelve resistivities, by Hyndman and Fan's definition 7") {
+  // Values: NIST/SEMATECH e-Handbook 7.2.6.2, in order. Position 1 + (n - 1) p, worked by hand: 90 % lies at 10.9,
+  // 95.1937 + 0.9 x 0.0022; 10 % at 2.1, 95.0925 + 0.1 x 0.0140; the median at 6.5. (The handbook's own 95.1981 for 90
+  // % is definition 6.)
+  const std::vector<double> sorted{95.0610, 95.0925, 95.1065, 95.1195, 95.1442, 95.1567,
+                                   95.1591, 95.1682, 95.1772, 95.1937, 95.1959, 95.1990};
+  CHECK(quantile(sorted, 0.9) == doctest::Approx(95.19568).epsilon(1e-12));
+  CHECK(quantile(sorted, 0.1) == doctest::Approx(95.0939).epsilon(1e-12));
+  CHECK(quantile(sorted, 0.5) == doctest::Approx(95.1579).epsilon(1e-12));
+  CHECK(quantile(sorted, 0) == 95.0610);
+  CHECK(quantile(sorted, 1) == 95.1990);
+}
+
+TEST_CASE("a quantile of one value is that value, of none is none") {
+  CHECK(quantile(std::vector<double>{3.5}, 0.999) == 3.5);
+  CHECK(std::isnan(quantile(std::vector<double>{}, 0.5)));
+}
