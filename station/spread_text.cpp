@@ -24,7 +24,7 @@ std::string share_name(std::size_t i) {
   return i == median ? "median" : fmt::format("{} %", 100 * spread_shares[i]);
 }
 
-/// Values of one spread alike, with so many digits that the deviation has three.
+/// Values of one spread alike, with so many digits that three of the deviation are seen.
 std::string value_text(const Spread& s, double value) {
   const double scale = std::max(std::abs(s.quantiles[least]), std::abs(s.quantiles[most]));
   int digits = 4;
@@ -34,7 +34,10 @@ std::string value_text(const Spread& s, double value) {
 }
 
 std::string deviation_text(const Spread& s) {
-  return s.measured < 2 ? "none" : format_quantity(s.summary.sd, s.metric.metric.unit, 3);
+  if (s.measured < 2) return "none";
+  const Unit unit = s.metric.metric.unit;
+  const bool plain = unit == Unit::ratio && s.summary.sd >= 0.01;  // as the values beside it, not in ppm
+  return plain ? fmt::format("{:.3g} V/V", s.summary.sd) : format_quantity(s.summary.sd, unit, 3);
 }
 std::string mean_text(const Spread& s) {
   return s.measured < 1 ? "none" : value_text(s, s.summary.mean);

@@ -45,6 +45,11 @@ expect 4 'R-7003' trace --reel R-703
 expect 0 "U7" trace --serial TB3-0180
 expect 0 "NO-GO" show TB3-0180
 expect 4 'TB3-0180' show TB3-018
+expect 0 "first findings of 240 boards: 240 measured" spread gain gain x100
+expect 0 "x100" spread gain gain
+expect 0 '"quantiles"' spread under-load load_delta --json
+expect 0 "TB3-0001," spread gain gain x100 --all-trials --csv
+expect 4 'did you mean "load_delta"' spread under-load load_dleta
 expect 0 '"event":"trial_ended"' try plan-b.toml --serial TB3-0003 --json
 expect 0 "probe-open:PROBE" faults
 # A plan with a question: answered by option, as JSON on standard input, or by nobody.

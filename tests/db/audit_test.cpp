@@ -2,9 +2,11 @@
 
 #include <sqlite3.h>
 
+#include <array>
 #include <fstream>
 #include <random>
 
+#include "db/columns.hpp"
 #include "db/sqlite.hpp"
 #include "tests/db/room.hpp"
 
@@ -95,6 +97,14 @@ void add(std::string& out, const BoardShown& shown) {
   }
 }
 
+void add(std::string& out, const MetricColumns& columns) {
+  for (std::size_t i = 0; i < columns.trials.size(); ++i) {
+    out.append(reinterpret_cast<const char*>(&columns.values[i]), sizeof(double));
+    out += std::to_string(columns.trials[i]) + ' ' + std::to_string(static_cast<int>(columns.states[i])) +
+           std::to_string(static_cast<int>(columns.verdicts[i])) + std::to_string(columns.firsts[i]) + '\n';
+  }
+}
+
 /// What every question and every view says: trials, findings, limits; carriers; the files' text and readings too.
 std::string answers(const std::string& path) {
   std::string out;
@@ -125,6 +135,11 @@ std::string answers(const std::string& path) {
   for (const char* serial : {"TB-01", "TB-02", "TB-03", "TB-99"}) {
     const auto shown = store.value()->show(serial);
     shown.ok() ? add(out, shown.value()) : void(out += describe(shown.error()));
+  }
+  for (const auto& [step, name, variant] :
+       {std::array{"offset", "offset", "x1"}, std::array{"offset", "offset", "x10"}, std::array{"known", "zero", ""}}) {
+    const auto read = read_metric(store.value()->database(), step, name, variant);
+    read.ok() ? add(out, read.value()) : void(out += describe(read.error()));
   }
   return out;
 }
@@ -326,31 +341,79 @@ void pack(const std::string& path) {
                        nullptr, nullptr, nullptr) == SQLITE_OK);
 }
 
-TEST_CASE("any of 300 single bytes of the file changed, if it changes an answer, shows") {
+/// Changes single bytes, one at a time, until so many of them have changed an answer; each of those must show.
+/// @param places  where to choose from
+void change_bytes(const std::string& path, const std::vector<std::size_t>& places, int wanted) {
+  const std::string whole = bytes_of(path), before = answers(path);
+  REQUIRE(passes(path));
+  std::mt19937_64 random(20260109);  // fixed, so that a failure can be repeated
+  int tried = 0, altered = 0, told = 0;
+  for (; altered < wanted && tried < 20 * wanted; ++tried) {
+    std::string bytes = whole;
+    const std::size_t at = places[random() % places.size()];
+    const auto flip = static_cast<unsigned char>(1 + random() % 255);
+    bytes[at] = static_cast<char>(static_cast<unsigned char>(bytes[at]) ^ flip);
+    put(path, bytes);
+    if (answers(path) == before) continue;
+    put(path, bytes);
+    ++altered;
+    const bool whole_still = passes(path);
+    told += whole_still ? 0 : 1;
+    CAPTURE(at);
+    CAPTURE(static_cast<int>(flip));
+    CHECK(!whole_still);
+  }
+  put(path, whole);
+  MESSAGE(altered, " of ", tried, " bytes altered an answer, ", told, " told of");
+  CHECK(altered == wanted);
+}
+
+std::vector<std::size_t> every_place(const std::string& path) {
+  std::vector<std::size_t> out(bytes_of(path).size());
+  for (std::size_t i = 0; i < out.size(); ++i) out[i] = i;
+  return out;
+}
+
+TEST_CASE("any of 900 single bytes of the file that changes an answer shows") {
   room::TempFolder folder;
   const std::string path = folder.file("s.db");
   fill(path);
   pack(path);
-  const std::string whole = bytes_of(path), before = answers(path);
-  REQUIRE(passes(path));
-  std::mt19937_64 random(20260109);  // fixed, so that a failure can be repeated
-  int altered = 0, told = 0, beside = 0;
-  for (int i = 0; i < 300; ++i) {
-    std::string bytes = whole;
-    const std::size_t at = random() % bytes.size();
-    const auto flip = static_cast<unsigned char>(1 + random() % 255);
-    bytes[at] = static_cast<char>(static_cast<unsigned char>(bytes[at]) ^ flip);
-    put(path, bytes);
-    const bool alters = answers(path) != before;
-    put(path, bytes);
-    const bool whole_still = passes(path);
-    if (!alters) beside += whole_still ? 0 : 1;
-    if (!alters) continue;
-    ++altered;
-    told += whole_still ? 0 : 1;
-    CAPTURE(at);
-    CHECK(!whole_still);
+  change_bytes(path, every_place(path), 900);
+}
+
+/// The least trials that have column blocks.
+void fill_with_blocks(const std::string& path) {
+  const auto store = room::open(path);
+  TrialEnd end = room::end(Judgement::go);
+  for (int i = 0; i <= stretch_trials; ++i) {
+    end.findings[0].judged.finding.value = i * 0.5e-6;
+    end.findings[0].judged.margin = margin(*end.findings[0].limit, i * 0.5e-6);
+    must(store->finish_trial(must(store->begin_trial(room::start("TB-0" + std::to_string(i % 7)))), end));
   }
-  MESSAGE(altered, " bytes altered an answer, ", told, " told of; of the others ", beside, " told of");
-  CHECK(altered > 30);
+  store->upkeep();
+}
+
+/// Where the bodies of column blocks lie: their pages follow no other in the file, so the bytes are looked for in
+/// parts.
+std::vector<std::size_t> places_of_blocks(const std::string& path) {
+  std::vector<std::size_t> out;
+  const std::string whole = bytes_of(path);
+  const auto handle = plain(path);
+  const std::string bodies = rows(handle.get(), "SELECT body FROM column_block");
+  for (std::size_t page = 0; page + 512 <= whole.size(); page += 512)
+    if (bodies.find(whole.substr(page + 4, 100)) != std::string::npos)  // of an overflow page, behind its link
+      for (std::size_t i = 0; i < 512; ++i) out.push_back(page + i);
+  return out;
+}
+
+TEST_CASE("any of 100 single bytes that changes an answer shows in a store with column blocks, half of them there") {
+  room::TempFolder folder;
+  const std::string path = folder.file("s.db");
+  fill_with_blocks(path);
+  pack(path);
+  const auto blocks = places_of_blocks(path);
+  REQUIRE(blocks.size() > 20 * 512);
+  change_bytes(path, blocks, 50);
+  change_bytes(path, every_place(path), 50);
 }
