@@ -63,7 +63,7 @@ const std::vector<CardCode>& card_codes() {
 }
 
 std::string test_code() {
-  return std::string(test_head) + "-yzYZ/_+;";
+  return std::string(test_head) + "-yzYZ/_+";
 }
 
 std::optional<Card> card_of(const std::string& scan) {

@@ -105,8 +105,8 @@ class TerminalScreen final : public LineScreen {
     if (!word.empty()) page += "\n";
     for (const std::string& line : view.lines) page += wrapped(line);
     if (!view.action.empty()) page += "\n" + wrapped(bold(view.action));
-    if (!view.live.empty()) page += "\n" + wrapped(view.live);
     page += "\n" + wrapped(bold(view.prompt));
+    if (!view.live.empty()) page += wrapped(view.live);
     if (!view.state.empty()) page += wrapped(view.state);
     fmt::print(out_, "{}\n  > ", page);
     std::fflush(out_);

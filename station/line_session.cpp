@@ -269,7 +269,7 @@ void LineSession::take_trying(const std::string& scan) {
     return host_.abort_trial();
   }
   if (scan.empty()) return;
-  view_.live = texts_.say("mid_trial", {{"serial", serial_}, {"scan", scan}});
+  view_.lines = {texts_.say("mid_trial", {{"serial", serial_}, {"scan", scan}})};
   show();
 }
 
