@@ -316,7 +316,7 @@ std::string sentence(Bar bar, const BoardNow& b) {
     case Bar::held: {
       if (b.holds.empty()) return fmt::format("Board {} is held.", b.serial);
       const HoldOn& h = b.holds.front();
-      return fmt::format("Board {} is held{}{}: {}{}", b.serial, h.about.empty() ? "" : " with " + h.about,
+      return fmt::format("Board {} is held{}{}: {}{}", b.serial, h.about.empty() ? "" : " (" + h.about + ")",
                          h.who.empty() ? "" : " by " + h.who, h.reason,
                          b.holds.size() > 1 ? fmt::format(" (and {} more holds).", b.holds.size() - 1) : ".");
     }
