@@ -235,6 +235,14 @@ void LineSession::log_in() {
       return enter(State::badge);
     }
   }
+  if (setup_.plan.jig) {
+    for (const CalibrationState& c : calibrations_due(setup_.plan.jig->calibrations, host_.now_us())) {
+      lines.push_back(texts_.say(c.overdue() ? "overdue" : "warned", {{"what", sentence(c)}}));
+      if (!c.overdue()) continue;
+      say(texts_.say("stopped"), Shape::bar, std::move(lines), texts_.say("call_engineer"));
+      return enter(State::dead);
+    }
+  }
   if (const std::string stopped = host_.stop_in_force(); !stopped.empty()) return stop(stopped, stop_by_cause);
   say({}, Shape::none, std::move(lines), {});
   enter(State::ready);

@@ -155,6 +155,12 @@ int try_boards(const TryOptions& options) {
     return exit_files;
   }
   if (const auto words = check_fault_words(*plan->jig, options.faults); !words.ok()) return fail(words.error());
+  for (const CalibrationState& c : calibrations_due(plan->jig->calibrations, utc_us())) {
+    if (c.overdue())
+      return fail({Error::Kind::instrument, sentence(c), plan->jig->source_text->name,
+                   "no board is tried until it is calibrated, or jig.toml says a new date"});
+    tell(sentence(c));
+  }
   StoreOptions how;
   how.backups = options.backups;
   auto store = Store::open(options.store, how);

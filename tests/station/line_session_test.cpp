@@ -374,3 +374,21 @@ TEST_CASE("the shift ends with a hand-over sheet and a record") {
   CHECK(b.line.acts.back().kind == "log-out");
   CHECK(b.line.acts.back().reason == "probe OUT is worn");
 }
+
+TEST_CASE("an instrument that is overdue lets no board in, one that soon will be is named") {
+  Shift b;
+  auto jig = std::make_shared<Jig>();
+  Calibration meter;
+  meter.instrument = "meter";
+  meter.due = std::chrono::sys_days(std::chrono::year(2026) / 1 / 20);  // the fake's today is 9 January
+  jig->calibrations = {meter};
+  b.plan.jig = jig;
+  b.begin();
+  CHECK(has(b.shown(), "Soon: the calibration of meter ends on 2026-01-20, in 11 days."));
+  CHECK(b.line.view.prompt == "Scan a board.");
+  jig->calibrations[0].due = std::chrono::sys_days(std::chrono::year(2026) / 1 / 8);
+  b.begin();
+  CHECK(b.line.view.word == "LINE STOPPED");
+  b.scan("TB3-0001");
+  CHECK(b.line.started.empty());
+}
