@@ -52,13 +52,15 @@ struct Restored {
   std::int64_t added{};                  ///< records from copies
   std::string set_aside;                 ///< where the damaged store lies now; empty = there was none
   std::optional<std::int64_t> lost;  ///< records that the damaged store had and that are gone; empty = can't be told
-  std::vector<std::string> gaps;     ///< stations whose copies could not be used to their end, and why
+  std::vector<std::string> gaps;     ///< copies that could not be used to their end, and why: by file or station
+  std::vector<std::string> foreign;  ///< files of copies there that are of another store: passed over
   std::vector<ChainHead> heads;      ///< of the new epochs
 };
 
 /// Makes the store anew at `store`, beside which whatever stood there is set aside. Each station's chain goes on in a
-/// new epoch. The restored store is audited before it gets its name.
-/// @return Error kind store: no whole backup, no room; what stood there is then untouched
+/// new epoch. The restored store is audited before it gets its name. Nobody drives a station meanwhile.
+/// @return Error kind store: a station is driven, no whole backup, backups of another store, no room; what stood there
+/// is then untouched
 Result<Restored> restore(const std::string& store, const std::string& folder, const std::string& who,
                          std::int64_t now_us);
 

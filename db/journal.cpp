@@ -151,23 +151,23 @@ void append_lists(Database& database, std::int64_t station, std::int64_t first, 
   }
 }
 
-void append_epoch(Database& database, std::int64_t station, std::string_view uuid, std::int64_t at_us) {
+void append_epoch(Database& database, std::int64_t station, std::int64_t epoch, std::string_view uuid,
+                  std::int64_t at_us) {
   const auto body = Bodies(database).epoch_begun(uuid);
   if (!body || database.failed()) return;
   add(database, station, chain_start(),
-      {journal_head(database, station).epoch + 1, 1, static_cast<int>(RecordKind::epoch_begun), std::string(uuid),
-       at_us, sha256(*body)});
+      {epoch, 1, static_cast<int>(RecordKind::epoch_begun), std::string(uuid), at_us, sha256(*body)});
 }
 
 void begin_epoch(Database& database, UuidMaker& uuids, std::int64_t station, const std::string& reason,
-                 const std::string& who, std::int64_t at_us) {
+                 const std::string& who, std::int64_t at_us, std::int64_t least) {
   const JournalHead head = journal_head(database, station);
   if (head.seq == 0) return;
   const Uuid uuid = uuids.next(at_us / 1000);
   database.run("INSERT INTO epoch_begun(uuid, reason, who, last_epoch, last_seq, last_hash) VALUES(?, ?, ?, ?, ?, ?)",
                Blob{bytes(uuid)}, reason, who.empty() ? std::nullopt : std::optional(who), head.epoch, head.seq,
                Blob{head.hash});
-  append_epoch(database, station, bytes(uuid), at_us);
+  append_epoch(database, station, std::max(head.epoch + 1, least), bytes(uuid), at_us);
 }
 
 std::int64_t station_row(Database& database, UuidMaker& uuids, const std::string& name, std::int64_t at_us) {

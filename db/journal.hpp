@@ -54,11 +54,13 @@ JournalHead journal_head(Database& database, std::int64_t station);
 
 /// Begins the station's next epoch: its first record names the head before it. Where the station has no record yet,
 /// nothing is done: its first epoch begins by itself.
+/// @param least  the new epoch's number at least: above those that stand elsewhere
 void begin_epoch(Database& database, UuidMaker& uuids, std::int64_t station, const std::string& reason,
-                 const std::string& who, std::int64_t at_us);
+                 const std::string& who, std::int64_t at_us, std::int64_t least = 2);
 
-/// The first record of the next epoch, whose row in `epoch_begun` is there.
-void append_epoch(Database& database, std::int64_t station, std::string_view uuid, std::int64_t at_us);
+/// The first record of that epoch, whose row in `epoch_begun` is there.
+void append_epoch(Database& database, std::int64_t station, std::int64_t epoch, std::string_view uuid,
+                  std::int64_t at_us);
 
 /// Row of the station's name, made when it is new.
 std::int64_t station_row(Database& database, UuidMaker& uuids, const std::string& name, std::int64_t at_us);

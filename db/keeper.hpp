@@ -25,12 +25,13 @@ class Keeper {
   Keeper(const Keeper&) = delete;
   Keeper& operator=(const Keeper&) = delete;
 
-  /// Copies what is new, and begins a backup when one is due. What fails becomes news, and is tried again later.
+  /// Copies what is new, and begins a backup when one is due. What fails becomes news, once until it succeeds or fails
+  /// otherwise, and is tried again later.
   void tend(std::int64_t now_us);
   /// Waits for a backup under way.
   void finish();
 
-  /// The store is damaged, as the last backup's audit found; empty = nothing is known against it.
+  /// The store is damaged, as the last backup's audit or the copying found; empty = nothing is known against it.
   std::optional<Error> damage() const;
   /// What a person should know, each thing once.
   std::vector<std::string> take_news();
@@ -38,16 +39,21 @@ class Keeper {
  private:
   void begin_backup(std::int64_t now_us);
   void copy();
+  void end_backup(const Result<BackupMade>& made);
   void tell(std::string news);
+  void damaged(const Error& how);
 
   Database& database_;
   BackupPlan plan_;
   RecordCopies copies_;
-  bool copies_failed_{false};
+  std::string copies_failed_;  ///< told of last; empty = they did not
   std::thread thread_;
   std::atomic<bool> stop_{false}, running_{false};
-  std::optional<std::chrono::steady_clock::time_point> not_before_;  ///< of the next backup, after one that failed
-  mutable std::mutex mutex_;                                         ///< guards the next two
+  using Time = std::chrono::steady_clock::time_point;
+  std::optional<Time> not_before_;         ///< of the next backup, after one that failed
+  std::optional<Time> copies_not_before_;  ///< likewise of copies, whose folder is then read anew
+  mutable std::mutex mutex_;               ///< guards the next three
+  std::string backup_failed_;              ///< told of last; empty = it did not
   std::vector<std::string> news_;
   std::optional<Error> damage_;
 };

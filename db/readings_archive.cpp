@@ -10,6 +10,7 @@
 #include <fstream>
 #include <iterator>
 
+#include "db/audit.hpp"
 #include "db/bodies.hpp"
 #include "db/digest.hpp"
 #include "db/journal.hpp"
@@ -45,8 +46,15 @@ class NewFile {
       if (wrote > 0) bytes.remove_prefix(static_cast<std::size_t>(wrote));
     }
   }
+  /// To the disk with its name, and out of memory, so that reading it back reads the disk.
   void sync() {
     if (reason_.empty() && ::fsync(file_) != 0) reason_ = std::strerror(errno);
+    ::posix_fadvise(file_, 0, 0, POSIX_FADV_DONTNEED);
+    const auto slash = path_.rfind('/');
+    const std::string folder = slash == std::string::npos ? "." : path_.substr(0, slash + 1);
+    const int opened = ::open(folder.c_str(), O_RDONLY | O_DIRECTORY | O_CLOEXEC);
+    if (reason_.empty() && (opened < 0 || (::fsync(opened) != 0 && errno != EINVAL))) reason_ = std::strerror(errno);
+    if (opened >= 0) ::close(opened);
   }
   std::string digest() { return hash_.digest(); }
   const std::string& reason() const { return reason_; }  ///< empty = all is well
@@ -82,7 +90,7 @@ class Old {
   Query rows_;
 };
 
-Archived write_copies(Database& database, NewFile& file, std::int64_t before_us) {
+Result<Archived> write_copies(Database& database, NewFile& file, std::int64_t before_us) {
   Archived out;
   std::string uuid;
   if (Query q = database.query("SELECT value FROM meta WHERE key = 'store'"); q.next()) uuid = q.text(0);
@@ -91,7 +99,10 @@ Archived write_copies(Database& database, NewFile& file, std::int64_t before_us)
   std::unordered_set<std::string> held;
   Old old(database, before_us);
   while (file.reason().empty() && old.next()) {
-    file.write(frames.of(old.row(), held));
+    const auto copy = frames.of(old.row(), held);
+    if (!copy && !database.failed()) return copy.error();
+    if (!copy) break;
+    file.write(copy.value());
     ++out.trials;
     out.bytes += old.length();
   }
@@ -115,19 +126,34 @@ bool reads_back(const std::string& path, const Archived& expected) {
   return found.trials == expected.trials && found.bytes == expected.bytes;
 }
 
+/// Where a step of so many trials ends; those that began in one microsecond stay together.
+std::int64_t step_end_us(Database& database, std::int64_t before_us, std::int64_t at_once) {
+  std::int64_t first_us = before_us;
+  Query q = database.query(
+      "SELECT t.at_us FROM trial t JOIN reading_blob r ON r.trial = t.id WHERE t.at_us < ? AND r.body IS NOT NULL "
+      "ORDER BY t.at_us LIMIT ?",
+      before_us, at_once + 1);
+  std::int64_t found = 0, last_us = before_us;
+  for (; q.next(); ++found) {
+    last_us = q.integer(0);
+    if (found == 0) first_us = last_us;
+  }
+  return found <= at_once ? before_us : std::max(last_us, first_us + 1);
+}
+
 }  // namespace
 
 Result<Archived> archive_readings(Database& database, UuidMaker& uuids, const std::string& file, std::int64_t before_us,
-                                  const std::string& station, const std::string& who, std::int64_t now_us) {
+                                  const std::string& station, const std::string& who, std::int64_t now_us,
+                                  std::int64_t at_once) {
   Transaction transaction(database, Transaction::Kind::write);
-  const auto next_us = database.first(
-      "SELECT t.at_us FROM trial t JOIN reading_blob r ON r.trial = t.id WHERE t.at_us < ? AND r.body IS NOT NULL "
-      "ORDER BY t.at_us LIMIT 1 OFFSET ?",
-      before_us, archived_at_once);
-  before_us = std::min(before_us, next_us.value_or(before_us));
+  before_us = std::min(before_us, step_end_us(database, before_us, at_once));
   NewFile copies(file);
   if (!copies.reason().empty()) return error_at(file, "the archive can't be made: " + copies.reason());
-  Archived out = write_copies(database, copies, before_us);
+  const auto written = write_copies(database, copies, before_us);
+  if (!written)
+    return Error{Error::Kind::store, "the store is damaged: " + written.error().what, database.path(), restore_advice};
+  const Archived out = written.value();
   if (!copies.reason().empty()) return error_at(file, "the archive can't be written: " + copies.reason());
   if (!database.failed() && !reads_back(file, out)) return error_at(file, "the archive does not read back as written");
   if (out.trials == 0) return database.result(out);

@@ -20,13 +20,14 @@ struct Archived {
 inline constexpr std::int64_t archived_at_once = 20'000;  ///< trials: the line waits a second or two for such a step
 
 /// Writes the records of trials that began before `before_us` and still have their raw readings, the oldest
-/// archived_at_once of them, to a new file of copies (record_copy.hpp), reads the file back, and takes the readings out
-/// of the store. Call it again until no trial was left.
+/// `at_once` of them, to a new file of copies (record_copy.hpp), reads the file back from the disk, and takes the
+/// readings out of the store. Call it again until no trial was left.
 /// @param file  must not exist
 /// @param station  whose record it is
 /// @return Error kind store: the file or the store; the store is then unchanged
 Result<Archived> archive_readings(Database& database, UuidMaker& uuids, const std::string& file, std::int64_t before_us,
-                                  const std::string& station, const std::string& who, std::int64_t now_us);
+                                  const std::string& station, const std::string& who, std::int64_t now_us,
+                                  std::int64_t at_once = archived_at_once);
 
 /// In the caller's transaction: in place of the readings of trials that began before, their hashes.
 /// @return trials

@@ -1,5 +1,7 @@
 #include "db/record_copy.hpp"
 
+#include <algorithm>
+
 #include "db/canonical.hpp"
 #include "db/digest.hpp"
 
@@ -72,6 +74,29 @@ std::size_t walk(std::string_view bytes, Take take) {
   return at;
 }
 
+/// Where a sound frame stands; the length when there is none.
+std::size_t sound_frame(std::string_view bytes) {
+  std::size_t at = bytes.find_first_of("pdr");
+  while (at != std::string_view::npos && !first_frame(bytes.substr(at))) at = bytes.find_first_of("pdr", at + 1);
+  return std::min(at, bytes.size());
+}
+
+/// @param read  how many bytes of frames stand at the front
+template <class Read>
+FramesRead walk_all(std::string_view bytes, Read read) {
+  FramesRead out;
+  out.end = read(bytes);
+  for (std::size_t at = out.end; at < bytes.size();) {
+    at += 1 + sound_frame(bytes.substr(at + 1));
+    if (at >= bytes.size()) break;
+    const std::size_t length = read(bytes.substr(at));
+    if (length == 0) continue;  // a frame of this program's whose payload is none
+    out.skipped += at - out.end;
+    out.end = at += length;
+  }
+  return out;
+}
+
 }  // namespace
 
 std::string copies_head(std::string_view store_uuid) {
@@ -110,8 +135,7 @@ std::size_t index_frames(std::string_view bytes, CopyIndex& index) {
     if (f.type != 'r') return true;
     const auto record = record_of(f.payload);
     if (!record) return false;
-    ChainPlace& last = index.last[record->station_uuid];
-    last = std::max(last, ChainPlace{record->epoch, record->seq});
+    index.chains[record->station_uuid][{record->epoch, record->seq}].insert(record->hash);
     return true;
   });
 }
@@ -127,10 +151,18 @@ std::size_t read_frames(std::string_view bytes, CopySet& set) {
     if (f.type != 'r') return true;
     auto record = record_of(f.payload);
     if (!record) return false;
-    const ChainPlace at{record->epoch, record->seq};
-    set.chains[record->station_uuid].insert_or_assign(at, std::move(*record));
+    const std::pair at{ChainPlace{record->epoch, record->seq}, record->hash};
+    set.chains[record->station_uuid].try_emplace(at, std::move(*record));  // the first has its raw readings still
     return true;
   });
+}
+
+FramesRead index_all_frames(std::string_view bytes, CopyIndex& index) {
+  return walk_all(bytes, [&](std::string_view from) { return index_frames(from, index); });
+}
+
+FramesRead read_all_frames(std::string_view bytes, CopySet& set) {
+  return walk_all(bytes, [&](std::string_view from) { return read_frames(from, set); });
 }
 
 }  // namespace jigwright

@@ -9,6 +9,7 @@
 #include <string_view>
 #include <unordered_map>
 #include <unordered_set>
+#include <utility>
 
 #include "base/error.hpp"
 #include "db/trial_record.hpp"
@@ -31,12 +32,13 @@ struct ChainPlace {
   auto operator<=>(const ChainPlace&) const = default;
 };
 
-/// What files of copies hold. A record that stands in two of them is held once.
+/// What files of copies hold. A record that stands in two of them is held once; two records of one place (a chain that
+/// was begun anew from an older backup) are both held.
 struct CopySet {
-  using Chain = std::map<ChainPlace, RecordCopy>;
-  std::map<std::string, Chain> chains;                  ///< by the station's uuid
-  std::unordered_map<std::string, std::string> parts;   ///< by SHA-256
-  std::unordered_map<std::string, Document> documents;  ///< by the SHA-256 of their text
+  using Chain = std::map<std::pair<ChainPlace, std::string>, RecordCopy>;  ///< by place and hash
+  std::map<std::string, Chain> chains;                                     ///< by the station's uuid
+  std::unordered_map<std::string, std::string> parts;                      ///< by SHA-256
+  std::unordered_map<std::string, Document> documents;                     ///< by the SHA-256 of their text
 };
 
 /// The first line of a file of copies.
@@ -49,14 +51,23 @@ std::string record_frame(const RecordCopy& record);
 
 /// What is known of a file that is being written: which records, parts and documents it has.
 struct CopyIndex {
-  std::map<std::string, ChainPlace> last;  ///< by the station's uuid
-  std::unordered_set<std::string> held;    ///< parts and documents, by SHA-256
+  using Chain = std::map<ChainPlace, std::unordered_set<std::string>>;  ///< hashes
+  std::map<std::string, Chain> chains;                                  ///< by the station's uuid
+  std::unordered_set<std::string> held;                                 ///< parts and documents, by SHA-256
 };
 
 /// Reads frames from the front of `bytes`, which stand behind a head or behind a frame.
 /// @return how many bytes of whole, sound frames: a file that was cut off ends behind them
 std::size_t index_frames(std::string_view bytes, CopyIndex& index);
 std::size_t read_frames(std::string_view bytes, CopySet& set);
+
+/// The same, and goes on with the next sound frame behind bytes that are none.
+struct FramesRead {
+  std::size_t end{};      ///< where the last sound frame ends: what stands behind it was cut off
+  std::size_t skipped{};  ///< bytes before it that are no frames: the file is damaged
+};
+FramesRead index_all_frames(std::string_view bytes, CopyIndex& index);
+FramesRead read_all_frames(std::string_view bytes, CopySet& set);
 
 /// Length of the head; nullopt when the bytes do not begin with the head of copies of this store.
 /// @param store_uuid  empty = of any store

@@ -1,25 +1,36 @@
 #include "db/record_frames.hpp"
 
+#include <fmt/format.h>
+
+#include "db/digest.hpp"
+
 namespace jigwright {
 
-std::string RecordFrames::of(const ChainRow& record, std::unordered_set<std::string>& held) {
+Result<std::string> RecordFrames::of(const ChainRow& record, std::unordered_set<std::string>& held) {
   const JournalRow& row = record.row;
   RecordCopy copy{record.station_uuid, record.station, row.epoch, row.seq, row.kind, row.uuid,
                   row.at_us,           record.hash,    {},        {}};
-  std::string out = body_of(record, copy, held);
+  add_body(record, copy);
+  if (sha256(copy.body) != row.body_sha256)
+    return Error{Error::Kind::store,
+                 fmt::format("{} (station {}, epoch {}, record {}): the rows are not what was recorded",
+                             record_word(row.kind), record.station, row.epoch, row.seq),
+                 db_.path(),
+                 {}};
+  std::string out;
+  if (static_cast<RecordKind>(row.kind) == RecordKind::trial)
+    for (const Part* part : bodies_.parts()) add_part(*part, held, out);
+  if (static_cast<RecordKind>(row.kind) == RecordKind::act) add_documents(held, out);  // an adopted revision names some
   return out + record_frame(copy);
 }
 
-/// Fills in the body, and gives the frames of the parts that it names.
-std::string RecordFrames::body_of(const ChainRow& record, RecordCopy& copy, std::unordered_set<std::string>& held) {
-  std::string out;
+void RecordFrames::add_body(const ChainRow& record, RecordCopy& copy) {
   const std::string& uuid = record.row.uuid;
   switch (static_cast<RecordKind>(record.row.kind)) {
     case RecordKind::trial: {
       const auto trial = bodies_.trial(uuid);
       if (!trial) break;
       copy.body = bodies_.bytes();
-      for (const Part* part : bodies_.parts()) add_part(*part, held, out);
       Query q = db_.query("SELECT body FROM reading_blob WHERE trial = ?", trial->id);
       if (q.next()) copy.readings = q.text(0);
       break;
@@ -37,10 +48,8 @@ std::string RecordFrames::body_of(const ChainRow& record, RecordCopy& copy, std:
       break;
     case RecordKind::act:
       copy.body = bodies_.act(uuid).value_or(std::string());
-      add_documents(held, out);  // an adopted revision names some
       break;
   }
-  return out;
 }
 
 /// With a new part come all documents that the file has not: there are few, and the part may name one of them.

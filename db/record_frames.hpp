@@ -22,12 +22,15 @@ class RecordFrames {
   explicit RecordFrames(Database& database) : db_(database), bodies_(database) {}
 
   /// @param held  parts and documents that the file has, by SHA-256; those of the frames are added
-  std::string of(const ChainRow& record, std::unordered_set<std::string>& held);
+  /// @return Error kind store when the rows are not what was recorded: such a copy would be of no use
+  Result<std::string> of(const ChainRow& record, std::unordered_set<std::string>& held);
+  /// After an error of the database: what was remembered of its rows.
+  void forget() { bodies_.forget(); }
 
  private:
   void add_part(const Part& part, std::unordered_set<std::string>& held, std::string& out);
   void add_documents(std::unordered_set<std::string>& held, std::string& out);
-  std::string body_of(const ChainRow& record, RecordCopy& copy, std::unordered_set<std::string>& held);
+  void add_body(const ChainRow& record, RecordCopy& copy);
 
   Database& db_;
   Bodies bodies_;

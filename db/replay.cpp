@@ -2,6 +2,11 @@
 
 #include <fmt/format.h>
 
+#include <algorithm>
+#include <limits>
+#include <map>
+#include <vector>
+
 #include "db/act.hpp"
 #include "db/bodies.hpp"
 #include "db/digest.hpp"
@@ -24,14 +29,20 @@ class Replay {
   Result<Replayed> run();
 
  private:
-  struct Next {
-    CopySet::Chain::const_iterator at, end;
-    JournalHead head;
+  /// The copies of one station that follow the store's own chain and each other, by their hashes.
+  struct Way {
+    std::vector<const RecordCopy*> records;
+    std::size_t at{0};
+    std::string gap;      ///< why it goes no further; empty = it is all there is
+    std::string refused;  ///< why the next can't be added; empty = not tried since another was
+    const RecordCopy* next() const { return at < records.size() ? records[at] : nullptr; }
   };
-  Result<Next> first_of(const std::string& uuid, const CopySet::Chain& chain);
-  std::string missing(const Next& next) const;
-  Result<bool> add(Next& next);
+  Result<Way> way_of(const std::string& uuid, const CopySet::Chain& chain);
+  Result<bool> add(Way& way);
+  void note_trial(const RecordCopy& record);
   void write(const RecordCopy& record);
+  void write_trial(const RecordCopy& record);
+  void write_earlier(const TrialCopy& trial);
   Id station(const RecordCopy& record);
   void write_list(const RecordCopy& record);
   void write_row(char table, CanonicalReader& r, Id entry);
@@ -45,57 +56,121 @@ class Replay {
   UuidMaker& uuids_;
   const CopySet& copies_;
   TrialWriter writer_;
+  std::map<std::string, std::map<Id, const RecordCopy*>> trials_;  ///< by serial and attempt
   Replayed out_;
 };
 
-std::string place(const RecordCopy& r) {
-  return fmt::format("station {}: record {} of epoch {}", r.station, r.seq, r.epoch);
+std::string place(const std::string& station, std::int64_t epoch, std::int64_t seq) {
+  return fmt::format("station {}: record {} of epoch {}", station, seq, epoch);
 }
 
-/// The first copy behind what the store has.
-Result<Replay::Next> Replay::first_of(const std::string& uuid, const CopySet::Chain& chain) {
-  Next out{chain.begin(), chain.end(), {1, 0, chain_start()}};
-  if (const auto id = db_.first("SELECT id FROM station WHERE uuid = ?", Blob{uuid})) out.head = journal_head(db_, *id);
-  out.at = chain.upper_bound({out.head.epoch, out.head.seq});
-  return db_.result(out);
+using Places = CopySet::Chain::const_iterator;
+
+Places first_at(const CopySet::Chain& chain, std::int64_t epoch, std::int64_t seq) {
+  return chain.lower_bound({{epoch, seq}, {}});
 }
 
-/// Why the next copy does not follow the chain; empty = it does.
-std::string Replay::missing(const Next& next) const {
-  const RecordCopy& r = next.at->second;
-  const bool follows = r.epoch == next.head.epoch && r.seq == next.head.seq + 1;
-  const bool begins = r.epoch == next.head.epoch + 1 && r.seq == 1;
-  if (follows || begins) return {};
-  return fmt::format("station {}: record {} of epoch {} is missing from the copies", r.station,
-                     r.epoch == next.head.epoch ? next.head.seq + 1 : 1, r.epoch);
+/// The record's hash says that it stands behind the head.
+bool follows(const RecordCopy& r, const JournalHead& head) {
+  const std::string before = r.epoch == head.epoch ? head.hash : chain_start();
+  return record_hash(before, r.station_uuid, {r.epoch, r.seq, r.kind, r.uuid, r.at_us, sha256(r.body)}) == r.hash;
+}
+
+/// A later epoch's first record, which names the head as the end of the epoch before.
+bool begins_behind(const RecordCopy& r, const JournalHead& head) {
+  if (r.epoch <= head.epoch || r.seq != 1) return false;
+  CanonicalReader body(r.body);
+  body.blob_column();
+  body.text_column();
+  body.maybe_text_column();
+  const auto epoch = body.maybe_integer_column(), seq = body.maybe_integer_column();
+  return epoch == head.epoch && seq == head.seq && body.blob_column() == head.hash && follows(r, head);
+}
+
+std::int64_t newest_us(Places from, Places to) {
+  std::int64_t out = std::numeric_limits<std::int64_t>::min();
+  for (; from != to; ++from) out = std::max(out, from->second.at_us);
+  return out;
+}
+
+/// Behind one record two may stand: the one that was lost when the store was restored from there, and the epoch begun
+/// then. The chain goes on where its newest record is.
+const RecordCopy* record_behind(const JournalHead& head, const CopySet::Chain& chain,
+                                const std::vector<const RecordCopy*>& begins) {
+  const RecordCopy* out = nullptr;
+  const auto first = first_at(chain, head.epoch, head.seq + 1), last = first_at(chain, head.epoch, head.seq + 2);
+  for (auto at = first; at != last && out == nullptr; ++at)
+    if (follows(at->second, head)) out = &at->second;
+  for (const RecordCopy* record : begins) {
+    if (!begins_behind(*record, head)) continue;
+    const auto epoch_ends = first_at(chain, head.epoch + 1, 0);
+    const bool newer =
+        out == nullptr || newest_us(first_at(chain, record->epoch, 1), chain.end()) >= newest_us(first, epoch_ends);
+    return newer ? record : out;
+  }
+  return out;
+}
+
+Result<Replay::Way> Replay::way_of(const std::string& uuid, const CopySet::Chain& chain) {
+  JournalHead head{1, 0, chain_start()};
+  if (const auto id = db_.first("SELECT id FROM station WHERE uuid = ?", Blob{uuid})) head = journal_head(db_, *id);
+  if (db_.failed()) return db_.error();
+  std::vector<const RecordCopy*> begins;  // the newest first
+  for (auto at = chain.rbegin(); at != chain.rend(); ++at)
+    if (at->second.kind == static_cast<int>(RecordKind::epoch_begun)) begins.push_back(&at->second);
+  Way out;
+  while (const RecordCopy* record = record_behind(head, chain, begins)) {
+    out.records.push_back(record);
+    head = {record->epoch, record->seq, record->hash};
+  }
+  const auto left = first_at(chain, head.epoch, head.seq + 1);
+  if (left == chain.end()) return out;
+  const bool due = left->first.first == ChainPlace{head.epoch, head.seq + 1};
+  out.gap =
+      place(left->second.station, head.epoch, head.seq + 1) + (due ? " is not sound" : " is missing from the copies");
+  return out;
 }
 
 Result<Replayed> Replay::run() {
-  std::vector<Next> chains;
+  std::vector<Way> ways;
   for (const auto& [uuid, chain] : copies_.chains) {
-    auto next = first_of(uuid, chain);
-    if (!next) return next.error();
-    if (next.value().at != next.value().end) chains.push_back(next.value());
+    auto way = way_of(uuid, chain);
+    if (!way) return way.error();
+    for (const RecordCopy* record : way.value().records) note_trial(*record);
+    ways.push_back(std::move(way.value()));
   }
-  while (!chains.empty()) {
-    auto next = chains.begin();
-    for (auto other = chains.begin(); other != chains.end(); ++other)
-      if (other->at->second.at_us < next->at->second.at_us) next = other;
+  for (;;) {
+    Way* next = nullptr;
+    for (Way& way : ways)
+      if (way.next() != nullptr && way.refused.empty())
+        if (next == nullptr || way.next()->at_us < next->next()->at_us) next = &way;
+    if (next == nullptr) break;
     const auto added = add(*next);
     if (!added) return added.error();
-    if (!added.value() || next->at == next->end) chains.erase(next);
+    if (added.value())
+      for (Way& way : ways) way.refused.clear();  // it may have waited for this one
+  }
+  for (const Way& way : ways) {
+    const std::string& why = way.next() == nullptr ? way.gap : way.refused;
+    if (!why.empty()) out_.gaps.push_back(why);
   }
   return std::move(out_);
 }
 
-/// @return false when the chain goes no further; nothing of the record stands then
-Result<bool> Replay::add(Next& next) {
-  const std::string gap = missing(next);
-  if (!gap.empty()) {
-    out_.gaps.push_back(gap);
-    return false;
-  }
-  const RecordCopy& record = next.at->second;
+/// So that the trials of one board can be begun in their order.
+void Replay::note_trial(const RecordCopy& record) {
+  if (record.kind != static_cast<int>(RecordKind::trial)) return;
+  CanonicalReader body(record.body);
+  body.blob_column();
+  const std::string serial = body.text_column();
+  for (int i = 0; i < 3; ++i) body.integer_column();
+  const Id attempt = body.integer_column();
+  if (!body.failed()) trials_[serial][attempt] = &record;
+}
+
+/// @return false when the record can't be added now; nothing of it stands then
+Result<bool> Replay::add(Way& way) {
+  const RecordCopy& record = *way.next();
   {
     Transaction transaction(db_, Transaction::Kind::write);
     write(record);
@@ -103,37 +178,65 @@ Result<bool> Replay::add(Next& next) {
     if (!db_.failed()) head = journal_head(db_, station(record));
     if (!db_.failed() && head.hash == record.hash) {
       if (const auto done = transaction.commit(); !done) return done.error();
-      next.head = head;
-      ++next.at;
+      ++way.at;
       ++out_.added;
       return true;
     }
+    if (db_.failed() && !db_.refused_values()) return db_.error();
+    way.refused = place(record.station, record.epoch, record.seq) + " can't be used";
+    way.refused += db_.failed() ? ": " + db_.error().what : ": it names what is not in the copies";
   }
-  const bool full = db_.failed() && db_.error().kind == Error::Kind::store && !db_.error().what.empty();
-  out_.gaps.push_back(place(record) + " is not sound" + (full ? ": " + db_.error().what : std::string()));
-  db_.clear_error();
+  writer_.forget();
   return false;
 }
 
 void Replay::write(const RecordCopy& record) {
   const Id at = station(record);
   switch (static_cast<RecordKind>(record.kind)) {
-    case RecordKind::trial: {
-      const auto copy = trial_copy(record, copies_);
-      if (copy && copy->station_uuid == record.station_uuid) writer_.replay(*copy);
-      return;
-    }
-    case RecordKind::list_entered:
+    case RecordKind::trial:
+      return write_trial(record);
+    case RecordKind::list_entered: {
       write_list(record);
-      return append_record(db_, at, RecordKind::list_entered, record.uuid, record.at_us, sha256(record.body));
+      const Id id = db_.first("SELECT id FROM entered WHERE uuid = ?", Blob{record.uuid}).value_or(0);
+      return append_lists(db_, at, id, id, record.at_us);
+    }
     case RecordKind::epoch_begun:
       return write_epoch(record);
-    case RecordKind::readings_archived:
+    case RecordKind::readings_archived: {
       write_archived(record);
-      return append_record(db_, at, RecordKind::readings_archived, record.uuid, record.at_us, sha256(record.body));
-    case RecordKind::act:
+      const auto body = Bodies(db_).archived(record.uuid);
+      if (body && !db_.failed())
+        append_record(db_, at, RecordKind::readings_archived, record.uuid, record.at_us, sha256(*body));
+      return;
+    }
+    case RecordKind::act: {
       write_act(record, at);
-      return append_record(db_, at, RecordKind::act, record.uuid, record.at_us, sha256(record.body));
+      const auto body = Bodies(db_).act(record.uuid);
+      if (body && !db_.failed()) append_record(db_, at, RecordKind::act, record.uuid, record.at_us, sha256(*body));
+      return;
+    }
+  }
+}
+
+void Replay::write_trial(const RecordCopy& record) {
+  const auto copy = trial_copy(record, copies_);
+  if (!copy || copy->station_uuid != record.station_uuid) return;
+  write_earlier(*copy);
+  writer_.replay(*copy);
+}
+
+/// Earlier trials of the board that have no record yet, as when they were begun: on another station, cut short there
+/// and found later, or with a stamp of a clock that was set back.
+void Replay::write_earlier(const TrialCopy& trial) {
+  const auto board = trials_.find(trial.start.serial);
+  if (board == trials_.end()) return;
+  for (const auto& [attempt, record] : board->second) {
+    if (attempt >= trial.attempt) return;
+    if (db_.first("SELECT 1 FROM trial WHERE uuid = ?", Blob{record->uuid})) continue;
+    const auto earlier = trial_copy(*record, copies_);
+    if (!earlier || earlier->station_uuid != record->station_uuid) continue;
+    station(*record);
+    writer_.replay_begin(*earlier);
   }
 }
 
@@ -217,7 +320,7 @@ void Replay::write_epoch(const RecordCopy& record) {
   const std::string last_hash = r.blob_column();
   db_.run("INSERT INTO epoch_begun(uuid, reason, who, last_epoch, last_seq, last_hash) VALUES(?, ?, ?, ?, ?, ?)",
           Blob{uuid}, reason, who, last_epoch, last_seq, Blob{last_hash});
-  append_epoch(db_, station(record), uuid, record.at_us);
+  append_epoch(db_, station(record), record.epoch, uuid, record.at_us);
 }
 
 void Replay::write_archived(const RecordCopy& record) {

@@ -18,9 +18,11 @@ struct Replayed {
   std::vector<std::string> gaps;
 };
 
-/// Adds what follows the store's own chains, in the order of each chain, chains merged by their stamps. Copies of
-/// records that the store has are passed over. Stops a chain at the first record that is missing or not sound.
-/// Error kind store: the store failed; the records before stand.
+/// Adds what follows the store's own chains, in the order of each chain, chains merged by their stamps as far as one
+/// does not need the other. Copies of records that the store has are passed over. Stops a chain at the first record
+/// that is missing or not sound; where the chain was once restored from that record, it goes on in the epoch begun
+/// then. A trial that began before another of its board stands before it, as open where its record can't be used. Error
+/// kind store: the store failed; the records before stand.
 Result<Replayed> replay(Database& database, UuidMaker& uuids, const CopySet& copies);
 
 }  // namespace jigwright

@@ -163,10 +163,21 @@ std::int64_t Database::changes() const {
 }
 
 void Database::fail(Error error) {
-  if (!error_) error_ = std::move(error);
+  if (failed()) return;
+  error_ = std::move(error);
+  refused_ = true;
 }
 void Database::fail(int code) {
-  fail(sqlite_error(code, sqlite3_errmsg(handle_), path_));
+  if (failed()) return;
+  error_ = sqlite_error(code, sqlite3_errmsg(handle_), path_);
+  const int primary = code & 0xff;
+  refused_ = primary == SQLITE_CONSTRAINT || primary == SQLITE_MISMATCH || primary == SQLITE_TOOBIG;
+}
+
+/// The path leads to another file by now, or to none.
+bool Database::moved() {
+  int moved = 0;
+  return sqlite3_file_control(handle_, "main", SQLITE_FCNTL_HAS_MOVED, &moved) == SQLITE_OK && moved != 0;
 }
 
 void Database::roll_back() {
@@ -177,6 +188,10 @@ void Database::roll_back() {
 Transaction::Transaction(Database& database, Kind kind) : database_(database), open_(true) {
   database_.clear_error();
   database_.script(kind == Kind::write ? "BEGIN IMMEDIATE" : "BEGIN");
+  if (kind == Kind::write && !database_.failed() && database_.moved())
+    database_.fail({Error::Kind::store,
+                    "the store's file was moved, replaced or removed while this program had it open", database_.path(),
+                    "end this program and start it again; what it recorded is in the moved file"});
 }
 
 Transaction::~Transaction() {

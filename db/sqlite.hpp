@@ -117,8 +117,13 @@ class Database {
 
   bool failed() const { return error_.has_value(); }
   const Error& error() const { return *error_; }
+  /// The error is of the values, which layout or caller do not take, and not of the disk.
+  bool refused_values() const { return failed() && refused_; }
   void fail(Error error);
-  void clear_error() { error_.reset(); }
+  void clear_error() {
+    error_.reset();
+    refused_ = false;
+  }
   /// A value, or the error that stuck.
   template <class T>
   Result<T> result(T value) {
@@ -132,18 +137,21 @@ class Database {
   Database(std::string path, sqlite3* handle) : path_(std::move(path)), handle_(handle) {}
   sqlite3_stmt* prepared(const char* text);
   void fail(int code);
+  bool moved();
   void roll_back();
 
   std::string path_;
   sqlite3* handle_;
   std::unordered_map<const char*, sqlite3_stmt*> statements_;
   std::optional<Error> error_;
+  bool refused_{false};
 };
 
 /// What SQLite said, in an Error with what to do about it.
 Error sqlite_error(int code, const std::string& reason, const std::string& path);
 
 /// BEGIN IMMEDIATE for writing, BEGIN for reading; rolled back unless committed. An error ends with its transaction.
+/// Nothing is written into a file that was moved, replaced or removed since it was opened.
 class Transaction {
  public:
   enum class Kind { write, read };

@@ -196,7 +196,9 @@ class Reading {
     out_.end.readings_format = static_cast<int>(body_.integer_column());
     const std::string_view hash = body_.text();
     out_.end.readings = record_.readings;
-    if (sha256(out_.end.readings) != hash) out_.archived_sha256 = hash;
+    if (sha256(out_.end.readings) == hash) return;
+    out_.archived_sha256 = hash;
+    if (!out_.end.readings.empty()) failed_ = true;  // not archived away, but not what was recorded
   }
 
   const RecordCopy& record_;

@@ -164,7 +164,7 @@ void TrialWriter::insert_open(const TrialStart& start, OpenTrial& open, int atte
   if (!start.operator_name.empty()) who = person(start.operator_name);
   open.attempt = attempt;
   if (attempt == 0)
-    open.attempt = static_cast<int>(db_.first("SELECT count(*) FROM trial WHERE board = ?", on).value_or(0)) + 1;
+    open.attempt = static_cast<int>(db_.first("SELECT max(attempt) FROM trial WHERE board = ?", on).value_or(0)) + 1;
   db_.run(
       "INSERT INTO trial(uuid, board, ord, station, nest, at_us, state, judgement, void_reason, origin, attempt, "
       "counts, setup, revision, operator, depth, purpose, adopted) VALUES(?, ?, ?, ?, ?, ?, 0, 2, ?, ?, ?, 0, ?, ?, ?, "
@@ -219,16 +219,24 @@ void TrialWriter::settle_copied(const TrialCopy& copy) {
             copy.start.limit_set, copy.start.limit_revision, limits);
 }
 
-void TrialWriter::replay(const TrialCopy& copy) {
+void TrialWriter::replay_begin(const TrialCopy& copy) {
   check_origin(copy.start);
   settle_copied(copy);
   settle_setup(copy.start);
+  setup_->revision = db_.first("SELECT id FROM revision WHERE uuid = ?", Blob{copy.revision_uuid}).value_or(0);
+  OpenTrial open;
+  open.uuid = copy.uuid;
+  insert_open(copy.start, open, copy.attempt);
+  setup_.reset();  // a later trial may name another revision of the same content
+  mark(open);
+}
+
+void TrialWriter::replay(const TrialCopy& copy) {
+  if (!db_.first("SELECT id FROM trial WHERE uuid = ? AND state = 0", Blob{bytes(copy.uuid)})) replay_begin(copy);
   OpenTrial open;
   open.uuid = copy.uuid;
   open.attempt = copy.attempt;
-  const auto begun = db_.first("SELECT id FROM trial WHERE uuid = ? AND state = 0", Blob{bytes(copy.uuid)});
-  if (begun) open.id = *begun;
-  if (!begun) insert_open(copy.start, open, copy.attempt);
+  open.id = db_.first("SELECT id FROM trial WHERE uuid = ? AND state = 0", Blob{bytes(copy.uuid)}).value_or(0);
   if (copy.state == TrialState::cut_short) db_.run("UPDATE trial SET state = 2, mark = NULL WHERE id = ?", open.id);
   std::vector<Bodies::Row> findings;
   if (copy.state == TrialState::ended) {

@@ -22,6 +22,10 @@ class TrialWriter {
   /// Writes a copy of a trial's record, all in the caller's transaction; an open row of the same uuid becomes it. What
   /// can't be written so that it bears its own names and hashes fails the database or shows in the journal's hash.
   void replay(const TrialCopy& copy);
+  /// The same of its begin alone: the trial stands as open, for a later replay() to end.
+  void replay_begin(const TrialCopy& copy);
+  /// After a transaction that was rolled back: what was remembered of its rows.
+  void forget();
   /// Gives every open trial of the station its record, as cut short: for whoever alone drives the station.
   /// @return how many
   Result<int> close_cut_short(const std::string& station, std::int64_t at_us);
@@ -72,7 +76,6 @@ class TrialWriter {
   void close(const OpenTrial& open, const TrialEnd& end, const Tally& tally, Id applied);
   void mark(const OpenTrial& open);
   void journal(const OpenTrial& open, const TrialEnd& end, std::vector<Bodies::Row> findings);
-  void forget();
 
   Database& db_;
   UuidMaker& uuids_;

@@ -6,6 +6,7 @@
 #include <optional>
 
 #include "db/backup.hpp"
+#include "db/copying.hpp"
 #include "db/digest.hpp"
 #include "db/readings_archive.hpp"
 #include "db/store.hpp"
@@ -44,6 +45,8 @@ std::string restored_text(const Restored& r, const std::string& store) {
                                 count(r.added, "record"));
   for (const std::string& name : r.passed_over)
     out += fmt::format("Backup {} is newer and not whole: it was passed over.\n", name);
+  for (const std::string& name : r.foreign)
+    out += fmt::format("{} holds copies of another store: it was passed over.\n", name);
   for (const std::string& gap : r.gaps) out += "Copies end early: " + printable(gap) + ".\n";
   if (r.lost && *r.lost == 0) out += "Nothing that the damaged store had is missing.\n";
   if (r.lost && *r.lost > 0)
@@ -73,7 +76,11 @@ int backup(const BackupOptions& options) {
   if (plan.folder.empty()) return fail(no_folder("--to"));
   StoreOptions reading;
   reading.access = StoreOptions::Access::read;
-  if (const auto store = Store::open(options.store, reading); !store) return fail(store.error());
+  const auto store = Store::open(options.store, reading);
+  if (!store) return fail(store.error());
+  // Should this backup turn out bad one day, the one before it and the copies since restore as much.
+  RecordCopies copies(store.value()->database(), plan.folder);
+  if (const auto copied = copies.catch_up(); !copied) tell(describe(copied.error()));
   const auto made = make_backup(options.store, plan, utc_us());
   if (!made.ok()) return fail(made.error());
   if (!made.value().audit.whole()) {

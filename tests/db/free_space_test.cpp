@@ -1,50 +1,16 @@
 #include "db/free_space.hpp"
 
-#include <sys/mount.h>
-#include <unistd.h>
-
 #include <fstream>
 
 #include "db/sqlite.hpp"
-#include "tests/db/room.hpp"
+#include "tests/db/disks.hpp"
 
 using namespace jigwright;
+using room::SmallDisk;
+using room::Unprivileged;
 namespace fs = std::filesystem;
 
 namespace {
-
-/// Files with rights like others' do: root may write everything, so it becomes nobody for a while.
-class Unprivileged {
- public:
-  Unprivileged() : was_(geteuid()) {
-    if (was_ == 0) REQUIRE(seteuid(65534) == 0);
-  }
-  ~Unprivileged() {
-    if (was_ == 0 && seteuid(0) != 0) std::abort();
-  }
-
- private:
-  uid_t was_;
-};
-
-/// A disk of its own of some megabytes, where this process may mount one.
-class SmallDisk {
- public:
-  explicit SmallDisk(const std::string& options) {
-    mounted_ = mount("tmpfs", folder_.path.c_str(), "tmpfs", 0, options.c_str()) == 0;
-    if (!mounted_) MESSAGE("skipped: a small disk needs root and the right to mount");
-  }
-  ~SmallDisk() {
-    if (mounted_) umount2(folder_.path.c_str(), MNT_DETACH);
-  }
-  bool mounted() const { return mounted_; }
-  bool make_read_only() { return mount("", folder_.path.c_str(), "", MS_REMOUNT | MS_RDONLY, "") == 0; }
-  std::string file(const std::string& name) const { return folder_.file(name); }
-
- private:
-  room::TempFolder folder_;
-  bool mounted_;
-};
 
 void rights(const fs::path& path, unsigned bits) {
   fs::permissions(path, fs::perms(bits));
