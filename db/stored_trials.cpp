@@ -21,7 +21,7 @@ std::vector<StoredTrial> heads(Database& database, std::int64_t after, int most)
     t.void_reason = q.text(4);
     t.unsafe = q.text(5);
     t.setup = q.integer(6);
-    t.readings_format = static_cast<int>(q.integer(7));
+    t.readings_format = q.null(8) ? 0 : static_cast<int>(q.integer(7));
     t.readings = q.text(8);
     out.push_back(std::move(t));
   }

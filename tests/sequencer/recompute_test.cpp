@@ -7,6 +7,7 @@
 #include <boost/asio/detached.hpp>
 #include <filesystem>
 
+#include "db/readings_archive.hpp"
 #include "db/sqlite.hpp"
 #include "db/store.hpp"
 #include "sample_trials.hpp"
@@ -40,6 +41,7 @@ class Recorded {
     fs::remove_all(folder_, ignored);
   }
   Database& database() { return store_->database(); }
+  std::string file(const std::string& name) const { return (folder_ / name).string(); }
   Recomputed again() {
     const auto out = recompute_all(database(), {});
     REQUIRE(out.ok());
@@ -115,6 +117,20 @@ TEST_CASE("what can't be worked out again is counted with its reason, and is no 
   CHECK(r.agree == 3);
   CHECK(r.left_out.size() == 2);
   CHECK(r.left_out.at("raw readings are not there any more") == 1);
+}
+
+TEST_CASE("trials whose raw readings were archived are counted as not worked out again, and are no difference") {
+  Recorded store;
+  UuidMaker uuids;
+  const std::string file = store.file("old.records");
+  const auto archived = archive_readings(store.database(), uuids, file, std::numeric_limits<std::int64_t>::max(),
+                                         "bench 1", "", 1'796'137'329'000'000);
+  REQUIRE(archived.ok());
+  CHECK(archived.value().trials == 5);
+  const Recomputed r = store.again();
+  CHECK(r.differ == 0);
+  CHECK(r.agree == 0);
+  CHECK(r.left_out.at("raw readings are not there any more") == 5);
 }
 
 TEST_CASE("another version of a step's arithmetic is not taken for a difference") {
