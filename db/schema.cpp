@@ -292,7 +292,8 @@ void lay_out_after(Database& database, std::int64_t layout) {
 }
 
 Result<std::int64_t> settle_schema(Database& database, bool create, std::string_view uuid) {
-  database.script("PRAGMA foreign_keys = ON; PRAGMA synchronous = FULL");
+  // The log beside the store grows while a long reading lasts, and shrinks again behind it to a few MB.
+  database.script("PRAGMA foreign_keys = ON; PRAGMA synchronous = FULL; PRAGMA journal_size_limit = 16777216");
   const bool empty = is_empty(database);
   if (database.failed()) return database.error();
   if (empty && !create) return refusal(database, "there is no store in this file", "check the path");
