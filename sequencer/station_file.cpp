@@ -44,10 +44,25 @@ std::string checked(TableReader& r, std::string_view key, std::string_view joint
   return instead;
 }
 
+/// Advice in hours: whoever writes 24 does not mean seconds. @return seconds
+std::int64_t read_every(const Node& every, TableReader& r, std::int64_t instead) {
+  constexpr double shortest_s = 60, longest_s = 366 * 86'400.0;
+  const char* advice = "write a time from 1 min to 8784 h with its unit in quotes, as in \"24 h\"";
+  if (every.text() == nullptr) {
+    r.fault(every.region, "\"every\": expected a time with its unit", advice);
+    return instead;
+  }
+  const double every_s = r.need_positive("every", Unit::second).value;
+  if (every_s > 0 && (every_s < shortest_s || every_s > longest_s))
+    r.fault(every.region, "\"every\": \"" + *every.text() + "\" is too " + (every_s < shortest_s ? "short" : "long"),
+            advice);
+  return every_s < shortest_s || every_s > longest_s ? instead : std::llround(every_s);
+}
+
 void read_backups(const Node& table, Faults& faults, BackupPlan& out) {
   TableReader r(table, "[backups]", faults);
   out.folder = r.need_text("folder").value;
-  if (r.has("every")) out.every_s = std::llround(r.need_positive("every", Unit::second).value);
+  if (r.has("every")) out.every_s = read_every(*find(*table.table(), "every"), r, out.every_s);
   if (const auto keep = r.integer("keep", 1, 1000)) out.keep = static_cast<int>(keep->value);
   r.finish();
 }
