@@ -3,6 +3,7 @@
 
 #include <CLI/CLI.hpp>
 #include <algorithm>
+#include <csignal>
 #include <optional>
 
 #include "base/nearest.hpp"
@@ -47,6 +48,7 @@ std::optional<std::string> unknown_command(const CLI::App& app, int argc, char**
 }  // namespace
 
 int main(int argc, char** argv) {
+  std::signal(SIGXFSZ, SIG_IGN);  // a file at its limit is an error like a full disk, and no end in mid-trial
   CLI::App app{"Jigwright runs a production test jig and remembers which component reel went into which board."};
   app.set_version_flag("--version", "jigwright " JIGWRIGHT_VERSION);
   app.footer(exit_help);

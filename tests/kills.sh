@@ -60,6 +60,7 @@ same "ended trials without findings or readings" "$(ask "select count(*) from tr
 [ "$shown" -gt "$kills" ] && good || bad "only $shown boards were shown: the kills came too early to prove anything"
 [ $slowest_ms -lt 1000 ] && good || bad "the start after a kill took $slowest_ms ms"
 
-echo "$kills kills: $shown boards shown as recorded, $held ended in the store, $((open + cut)) cut short; the slowest start after a kill took $slowest_ms ms"
+found=$(sort "$work/shown" | comm -12 - "$work/held" | wc -l)
+echo "$kills kills: $shown boards shown as recorded, $found of them in the store, $held ended there, $((open + cut)) cut short; the slowest start after a kill took $slowest_ms ms"
 echo "$passed passed, $failed failed"
 [ "$failed" = 0 ]

@@ -29,6 +29,9 @@ sh tests/whole.sh build/jigwright
 step "kills of the running program"
 sh tests/kills.sh build/jigwright
 
+step "the drill for the worst day, in short"
+sh tests/drill.sh --built 5 50
+
 step "benchmark"
 build/benchmark
 build/benchmark_store 5000
