@@ -58,13 +58,18 @@ Uuid add_act(Database& database, UuidMaker& uuids, const ActRecord& act) {
   const Uuid uuid = uuids.next(act.at_us / 1000);
   const Id station = station_row(database, uuids, act.station, act.at_us);
   database.run(
-      "INSERT INTO act(uuid, station, kind, at_us, who, second, reason, about, ends, trial, after_trial) "
-      "VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?, ?, (SELECT coalesce(max(id), 0) FROM trial))",
+      "INSERT INTO act(uuid, station, kind, at_us, who, second, reason, about, ends, trial) "
+      "VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
       Blob{bytes(uuid)}, station, act.kind, act.at_us, unless_empty(act.who), unless_empty(act.second),
       unless_empty(act.reason), unless_empty(act.about), blob(act.ends), blob(act.trial));
   const Id id = database.last_id();
-  for (const std::string& serial : act.boards)
-    database.run("INSERT OR IGNORE INTO act_board(act, board) VALUES(?, ?)", id, board(database, serial));
+  for (const std::string& serial : act.boards) {
+    const Id on = board(database, serial);
+    database.run(
+        "INSERT OR IGNORE INTO act_board(act, board, attempts) VALUES(?, ?, (SELECT count(*) FROM trial WHERE "
+        "board = ?))",
+        id, on, on);
+  }
   for (const auto& [key, value] : act.values)
     database.run("INSERT INTO act_value(act, key, value) VALUES(?, ?, ?)", id, key, value);
   if (const auto body = Bodies(database).act(bytes(uuid)); body && !database.failed())

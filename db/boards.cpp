@@ -29,26 +29,26 @@ std::optional<Kind> kind_of(const std::string& act) {
   return std::nullopt;
 }
 
-/// Events with the place of each among the trials, so that no clock decides.
+/// Events with the place of each among the board's trials, so that no clock decides. act 0: the trial itself.
 struct Placed {
-  Id after_trial{}, act{};
+  Id attempts{}, act{};
   BoardEvent event;
 };
 
 void add_trials(Database& database, Id board, const std::string& order, std::vector<Placed>& out) {
-  Query q =
-      database.query("SELECT id, uuid, judgement, setup FROM trial WHERE board = ? AND purpose = 0 ORDER BY id", board);
+  Query q = database.query(
+      "SELECT attempt, uuid, judgement, setup, adopted FROM trial WHERE board = ? AND purpose = 0 ORDER BY attempt",
+      board);
   while (q.next()) {
     BoardEvent event{Kind::tried, q.text(1), static_cast<Judgement>(q.integer(2)), false};
-    event.withdrawn = is_withdrawn(database, order, q.integer(0), q.integer(3));
+    event.withdrawn = is_withdrawn(database, order, q.maybe_integer(4), q.integer(3));
     out.push_back({q.integer(0), 0, event});
   }
 }
 
 void add_acts(Database& database, Id board, std::vector<Placed>& out) {
   Query q = database.query(
-      "SELECT a.id, a.kind, a.after_trial, a.trial FROM act_board x JOIN act a ON a.id = x.act WHERE x.board = ?",
-      board);
+      "SELECT a.id, a.kind, x.attempts, a.trial FROM act_board x JOIN act a ON a.id = x.act WHERE x.board = ?", board);
   while (q.next())
     if (const auto kind = kind_of(q.text(1)))
       out.push_back({q.integer(2), q.integer(0), {*kind, q.text(3), Judgement::void_, false}});
@@ -81,32 +81,34 @@ bool rule_takes_in(Database& database, Id hold, Id board) {
   return false;
 }
 
-bool is_lifted(Database& database, const std::string& hold, Id board) {
-  return database
-      .first(
-          "SELECT 1 FROM act a WHERE a.ends = ? AND a.kind IN ('release', 'waive') AND "
-          "(NOT EXISTS(SELECT 1 FROM act_board x WHERE x.act = a.id) OR "
-          "EXISTS(SELECT 1 FROM act_board x WHERE x.act = a.id AND x.board = ?))",
-          Blob{hold}, board)
-      .has_value();
+/// The first act that lifted the hold for the board: it names the board, or no board, or the hold's own rule.
+std::optional<Placed> lifting(Database& database, const std::string& hold, Id board) {
+  Query q = database.query(
+      "SELECT coalesce(x.attempts, 0), a.id FROM act a LEFT JOIN act_board x ON x.act = a.id AND x.board = ? "
+      "WHERE a.ends = ? AND a.kind IN ('release', 'waive') AND "
+      "(x.act IS NOT NULL OR NOT EXISTS(SELECT 1 FROM act_board y WHERE y.act = a.id) OR "
+      "EXISTS(SELECT 1 FROM act_value v WHERE v.act = a.id AND v.key = 'by')) ORDER BY a.id LIMIT 1",
+      board, Blob{hold});
+  if (!q.next()) return std::nullopt;
+  return Placed{q.integer(0), q.integer(1), {Kind::lifted, hold, Judgement::void_, false}};
 }
 
-/// Holds and what lifted them, as events. Whether one was lifted does not hang on its order among the trials.
+/// Holds and what lifted them, as events. A hold that takes the board in by its rule has no place among its trials: it
+/// stands at their beginning.
 void add_holds(Database& database, Id board, BoardNow& out, std::vector<Placed>& placed) {
   Query q = database.query(
-      "SELECT a.id, a.uuid, a.who, a.reason, a.about, a.at_us, a.after_trial, "
-      "EXISTS(SELECT 1 FROM act_board x WHERE x.act = a.id AND x.board = ?) FROM act a WHERE a.kind = 'hold'",
+      "SELECT a.id, a.uuid, a.who, a.reason, a.about, a.at_us, x.attempts FROM act a LEFT JOIN act_board x ON "
+      "x.act = a.id AND x.board = ? WHERE a.kind = 'hold' ORDER BY a.id",
       board);
   while (q.next()) {
-    if (q.integer(7) == 0 && !rule_takes_in(database, q.integer(0), board)) continue;
+    if (q.null(6) && !rule_takes_in(database, q.integer(0), board)) continue;
     placed.push_back({q.integer(6), q.integer(0), {Kind::held, q.text(1), Judgement::void_, false}});
-    if (!is_lifted(database, q.text(1), board)) {
+    if (auto lifted = lifting(database, q.text(1), board)) {
+      lifted->attempts = std::max(lifted->attempts, q.integer(6));
+      placed.push_back(*lifted);
+    } else {
       out.holds.push_back({uuid_from_bytes(q.text(1)).value_or(Uuid{}), q.text(2), q.text(3), q.text(4), q.integer(5)});
-      continue;
     }
-    const auto after = database.first(
-        "SELECT max(after_trial) FROM act WHERE ends = ? AND kind IN ('release', 'waive')", Blob{q.text(1)});
-    placed.push_back({after.value_or(0), q.integer(0), {Kind::lifted, q.text(1), Judgement::void_, false}});
   }
 }
 
@@ -148,7 +150,7 @@ BoardNow read_board_now(Database& database, const std::string& serial) {
   add_acts(database, *board, placed);
   add_holds(database, *board, out, placed);
   std::stable_sort(placed.begin(), placed.end(), [](const Placed& a, const Placed& b) {
-    return std::pair(a.after_trial, a.act) < std::pair(b.after_trial, b.act);
+    return std::pair(a.attempts, a.act) < std::pair(b.attempts, b.act);
   });
   for (const Placed& p : placed) out.standing.add(p.event);
   out.known = out.build_no.has_value() || out.standing.trials() > 0;
@@ -157,6 +159,18 @@ BoardNow read_board_now(Database& database, const std::string& serial) {
       "ORDER BY a.id DESC LIMIT 1",
       *board);
   if (to.next()) out.shipped_to = to.text(0);
+  return out;
+}
+
+std::vector<ActRecord> rules_in_force(Database& database) {
+  std::vector<ActRecord> out = acts_of(database, "hold");
+  std::erase_if(out, [&](const ActRecord& hold) {
+    return !hold.values.contains("by") ||
+           database.first(
+               "SELECT 1 FROM act a WHERE a.ends = ? AND (NOT EXISTS(SELECT 1 FROM act_board y WHERE y.act = a.id) OR "
+               "EXISTS(SELECT 1 FROM act_value v WHERE v.act = a.id AND v.key = 'by'))",
+               Blob{bytes(hold.uuid)});
+  });
   return out;
 }
 
@@ -212,23 +226,35 @@ Result<Condition> read_condition(const std::string& text) {
   return out;
 }
 
+std::vector<std::string> texts(Query q) {
+  std::vector<std::string> out;
+  while (q.next()) out.push_back(q.text(0));
+  return out;
+}
+
+std::optional<Error> unknown_metric(Database& database, const Condition& c) {
+  const auto variants =
+      texts(database.query("SELECT DISTINCT variant FROM metric WHERE step = ? AND name = ?", c.step, c.metric));
+  if (variants.empty())
+    return usage(fmt::format("no trial has the metric \"{}.{}\"", printable(c.step), printable(c.metric)),
+                 "known are " + listed(texts(database.query("SELECT DISTINCT step || '.' || name FROM metric"))));
+  const auto meant = [&](const std::string& v) { return v == c.variant || v.starts_with(c.variant + " "); };
+  if (c.variant.empty() || std::any_of(variants.begin(), variants.end(), meant)) return std::nullopt;
+  return usage(fmt::format("{}.{} has no variant \"{}\"", c.step, c.metric, printable(c.variant)),
+               "known are " + listed(variants));
+}
+
 Result<std::set<Id>> meeting(Database& database, const std::string& text) {
   const auto read = read_condition(text);
   if (!read) return read.error();
   const Condition& c = read.value();
-  if (!database.first("SELECT 1 FROM metric WHERE step = ? AND name = ?", c.step, c.metric)) {
-    std::vector<std::string> known;
-    Query q = database.query("SELECT DISTINCT step || '.' || name FROM metric");
-    while (q.next()) known.push_back(q.text(0));
-    return usage(fmt::format("no trial has the metric \"{}.{}\"", printable(c.step), printable(c.metric)),
-                 "known are " + listed(known));
-  }
+  if (auto fault = unknown_metric(database, c)) return *fault;
   std::set<Id> out;
   Query q = database.query(
       "SELECT t.board, x.value, m.unit FROM metric m CROSS JOIN trial t ON t.counts = 1 CROSS JOIN finding x "
-      "ON x.trial = t.id AND x.metric = m.id WHERE m.step = ? AND m.name = ? AND (? = '' OR instr(m.variant, ?) > 0) "
-      "AND x.value IS NOT NULL",
-      c.step, c.metric, c.variant, c.variant);
+      "ON x.trial = t.id AND x.metric = m.id WHERE m.step = ? AND m.name = ? AND (? = '' OR m.variant = ? OR "
+      "instr(m.variant, ? || ' ') = 1) AND x.value IS NOT NULL",
+      c.step, c.metric, c.variant, c.variant, c.variant);
   while (q.next()) {
     if (q.text(2) != symbol(c.value.unit))
       return usage(fmt::format("{}.{} is found in {}, and the condition is in {}", c.step, c.metric, q.text(2),
@@ -334,7 +360,7 @@ std::string sentence(Bar bar, const BoardNow& b) {
     case Bar::not_go:
       return fmt::format("Board {} is {}.", b.serial, word(b.standing.judgement().value_or(Judgement::void_)));
     case Bar::withdrawn:
-      return fmt::format("Board {} was tried under a revision that no longer stands for its order.", b.serial);
+      return fmt::format("Board {} was not tried under a revision that stands for its order.", b.serial);
   }
   return {};
 }

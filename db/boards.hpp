@@ -1,6 +1,7 @@
 // Where boards stand, read from the store: standing.hpp folded over a board's trials and acts, with the holds that
 // concern it. Holds may name boards, or a rule (an order, a reel, a maker's lot) that also takes in boards which become
-// known later. Each call that says so is one short reading transaction; others run in the caller's. One thread.
+// known later; a release or waiver that bears the same rule ends it for all. Each call that says so is one short
+// reading transaction; others run in the caller's. One thread.
 #pragma once
 #include <cstdint>
 #include <map>
@@ -36,6 +37,9 @@ struct BoardNow {
 Result<BoardNow> board_now(Database& database, const std::string& serial);
 /// The same in the caller's transaction.
 BoardNow read_board_now(Database& database, const std::string& serial);
+
+/// Holds by a rule that nobody has ended, oldest first: values "by" and "name" say it. In the caller's transaction.
+std::vector<ActRecord> rules_in_force(Database& database);
 
 /// Which boards a person means. All that are given must hold; empty = of no account.
 struct BoardChoice {

@@ -376,10 +376,10 @@ std::optional<std::string> Bodies::act(std::string_view uuid) {
   Canonical body;
   add_columns(body, q, 1, 10);
   Query boards = db_.query(
-      "SELECT b.serial FROM act_board a JOIN board b ON b.id = a.board WHERE a.act = ? "
+      "SELECT b.serial, a.attempts FROM act_board a JOIN board b ON b.id = a.board WHERE a.act = ? "
       "ORDER BY b.serial",
       q.integer(0));
-  while (boards.next()) add_columns(body.mark('b'), boards, 0, 1);
+  while (boards.next()) add_columns(body.mark('b'), boards, 0, 2);
   Query values = db_.query("SELECT key, value FROM act_value WHERE act = ? ORDER BY key", q.integer(0));
   while (values.next()) add_columns(body.mark('v'), values, 0, 2);
   return body.bytes();

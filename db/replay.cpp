@@ -351,8 +351,8 @@ void Replay::write_act(const RecordCopy& record, Id at) {
   const std::string ends = r.blob_column(), trial = r.blob_column();
   const auto blob = [](const std::string& b) { return b.empty() ? std::nullopt : std::optional(Blob{b}); };
   db_.run(
-      "INSERT INTO act(uuid, station, kind, at_us, who, second, reason, about, ends, trial, after_trial) "
-      "VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?, ?, (SELECT coalesce(max(id), 0) FROM trial))",
+      "INSERT INTO act(uuid, station, kind, at_us, who, second, reason, about, ends, trial) "
+      "VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
       Blob{uuid}, at, kind, at_us, who, second, reason, about, blob(ends), blob(trial));
   const Id act = db_.last_id();
   while (!r.at_end() && !db_.failed()) {
@@ -360,7 +360,7 @@ void Replay::write_act(const RecordCopy& record, Id at) {
     if (row == 'b') {
       const Id board =
           named("SELECT id FROM board WHERE serial = ?", "INSERT INTO board(serial) VALUES(?)", r.text_column());
-      db_.run("INSERT INTO act_board(act, board) VALUES(?, ?)", act, board);
+      db_.run("INSERT INTO act_board(act, board, attempts) VALUES(?, ?, ?)", act, board, r.integer_column());
     } else if (row == 'v') {
       const std::string key = r.text_column();
       const std::string value = r.text_column();

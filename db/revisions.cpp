@@ -2,7 +2,9 @@
 
 #include <fmt/format.h>
 
+#include <algorithm>
 #include <charconv>
+#include <tuple>
 
 #include "db/digest.hpp"
 #include "db/sqlite.hpp"
@@ -49,6 +51,18 @@ std::string document_of(Database& database, Id setup, const char* kind) {
   return q.next() ? hex(q.text(0)) : std::string();
 }
 
+/// The revisions that came into force for the order, one after the other: those for every order, until it had its own.
+std::vector<Adopted> adopted_in_turn(Database& database, const std::string& order) {
+  std::vector<Adopted> out;
+  bool own = false;
+  for (Adopted& a : all_adopted(database)) {
+    const bool for_order = !a.order.empty() && a.order == order;
+    own = own || for_order;
+    if (for_order || (a.order.empty() && !own)) out.push_back(std::move(a));
+  }
+  return out;
+}
+
 }  // namespace
 
 std::vector<Adopted> all_adopted(Database& database) {
@@ -58,14 +72,8 @@ std::vector<Adopted> all_adopted(Database& database) {
 }
 
 std::optional<Adopted> adopted_for(Database& database, const std::string& order) {
-  std::optional<Adopted> own, general;
-  for (Adopted& a : all_adopted(database)) {
-    if (a.order.empty())
-      general = std::move(a);
-    else if (a.order == order)
-      own = std::move(a);
-  }
-  return own ? own : general;
+  auto all = adopted_in_turn(database, order);
+  return all.empty() ? std::nullopt : std::optional(std::move(all.back()));
 }
 
 Result<Adopted> adopt(Database& database, UuidMaker& uuids, const Adopting& adopting) {
@@ -101,25 +109,17 @@ Result<Adopted> adopt(Database& database, UuidMaker& uuids, const Adopting& adop
   return adopted(act);
 }
 
-bool is_withdrawn(Database& database, const std::string& order, Id trial, Id setup) {
-  const auto barring = database.first(
-      "SELECT 1 FROM act a JOIN act_value v ON v.act = a.id WHERE a.kind = 'adopt' AND (a.about IS NULL OR a.about = "
-      "?) "
-      "AND a.after_trial >= ? AND v.key = 'earlier trials' AND v.value = 'again' LIMIT 1",
-      order, trial);
-  if (!barring) return false;
-  // The first such revision, and every later one, may be the one that the trial was played with.
-  const auto first = database.first(
-      "SELECT min(a.id) FROM act a JOIN act_value v ON v.act = a.id WHERE a.kind = 'adopt' AND "
-      "(a.about IS NULL OR a.about = ?) AND a.after_trial >= ? AND v.key = 'earlier trials' AND v.value = 'again'",
-      order, trial);
-  return !database
-              .first(
-                  "SELECT 1 FROM act a JOIN act_value p ON p.act = a.id AND p.key = 'plan' JOIN act_value l ON "
-                  "l.act = a.id AND l.key = 'limits' WHERE a.kind = 'adopt' AND (a.about IS NULL OR a.about = ?) AND "
-                  "a.id >= ? AND p.value = ? AND l.value = ? LIMIT 1",
-                  order, first, document_of(database, setup, "plan"), document_of(database, setup, "limits"))
-              .has_value();
+bool is_withdrawn(Database& database, const std::string& order, std::optional<std::int64_t> adopted, Id setup) {
+  const auto revisions = adopted_in_turn(database, order);
+  if (revisions.empty()) return false;
+  const auto files_of = [&](const Adopted& a) { return std::tie(a.plan, a.jig, a.limits); };
+  const auto plan = document_of(database, setup, "plan"), jig = document_of(database, setup, "jig"),
+             limits = document_of(database, setup, "limits");
+  const auto played = [&](const Adopted& a) { return files_of(a) == std::tie(plan, jig, limits); };
+  if (adopted == 0) return !played(revisions.back());
+  const auto last = std::find_if(revisions.rbegin(), revisions.rend(),
+                                 [&](const Adopted& a) { return a.number > adopted.value_or(0) && !a.earlier_stand; });
+  return last != revisions.rend() && std::none_of(revisions.rbegin(), last + 1, played);
 }
 
 std::string differing(const Adopted& adopted, const RevisionFiles& files) {

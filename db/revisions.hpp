@@ -44,10 +44,13 @@ std::optional<Adopted> adopted_for(Database& database, const std::string& order)
 /// Newest last.
 std::vector<Adopted> all_adopted(Database& database);
 
-/// Whether a later revision for the order says that trials before it don't stand, and the trial was not played with
-/// that revision's plan and limits, nor with later ones'.
-/// @param trial, setup  rows
-bool is_withdrawn(Database& database, const std::string& order, std::int64_t trial, std::int64_t setup);
+/// Whether a trial says nothing of its board under the order's revisions: a later one says that trials before it don't
+/// stand, and the trial was not played with the files of the last such nor of any after it; or it was played beside the
+/// revision in force, with other files than are in force now.
+/// @param adopted  as the trial has it
+/// @param setup    row
+bool is_withdrawn(Database& database, const std::string& order, std::optional<std::int64_t> adopted,
+                  std::int64_t setup);
 
 /// What differs from the revision in force: "limits", "plan and jig"; empty = nothing.
 std::string differing(const Adopted& adopted, const RevisionFiles& files);

@@ -201,18 +201,18 @@ CREATE TABLE epoch_begun(
 CREATE TABLE archived(
   id INTEGER PRIMARY KEY, uuid BLOB NOT NULL UNIQUE, who TEXT, before_us INTEGER NOT NULL, trials INTEGER NOT NULL,
   bytes INTEGER NOT NULL, name TEXT NOT NULL, sha256 BLOB NOT NULL) STRICT;
--- What people and the line do beside trials: act.hpp. after_trial: the newest trial then, for the order of a board's
--- events, whatever the clock said.
+-- What people and the line do beside trials: act.hpp.
 CREATE TABLE act(
   id INTEGER PRIMARY KEY, uuid BLOB NOT NULL UNIQUE, station INTEGER NOT NULL REFERENCES station, kind TEXT NOT NULL,
-  at_us INTEGER NOT NULL, who TEXT, second TEXT, reason TEXT, about TEXT, ends BLOB, trial BLOB,
-  after_trial INTEGER NOT NULL) STRICT;
+  at_us INTEGER NOT NULL, who TEXT, second TEXT, reason TEXT, about TEXT, ends BLOB, trial BLOB)
+  STRICT;
 CREATE INDEX act_kind ON act(kind, about);
 CREATE INDEX act_ends ON act(ends) WHERE ends IS NOT NULL;
 CREATE INDEX act_trial ON act(trial) WHERE trial IS NOT NULL;
+-- attempts: the board's trials then, for the order of its events, whatever the clock said.
 CREATE TABLE act_board(
-  act INTEGER NOT NULL REFERENCES act, board INTEGER NOT NULL REFERENCES board, PRIMARY KEY(act, board)) STRICT,
-  WITHOUT ROWID;
+  act INTEGER NOT NULL REFERENCES act, board INTEGER NOT NULL REFERENCES board, attempts INTEGER NOT NULL,
+  PRIMARY KEY(act, board)) STRICT, WITHOUT ROWID;
 CREATE INDEX act_board_board ON act_board(board);
 CREATE TABLE act_value(
   act INTEGER NOT NULL REFERENCES act, key TEXT NOT NULL, value TEXT NOT NULL, PRIMARY KEY(act, key)) STRICT,

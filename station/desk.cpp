@@ -4,6 +4,7 @@
 
 #include <CLI/CLI.hpp>
 #include <map>
+#include <set>
 
 #include "db/act.hpp"
 #include "db/boards.hpp"
@@ -93,10 +94,13 @@ int to_boards(Desk& desk, const std::string& kind, const std::string& done,
                                   count(chosen.value().size(), "board")),
                       "leave those out, or settle them first"));
   }
+  if (chosen.value().empty() && act.values.empty())
+    return fail(usage("no board is all of that", "nothing was recorded"));
   act.boards = chosen.value();
   add_act(desk.db(), desk.uuids(), act);
   if (const auto recorded = transaction.commit(); !recorded) return fail(recorded.error());
-  fmt::print("{} {}: {}\n", count(act.boards.size(), "board"), done, some(act.boards));
+  fmt::print("{} {}: {}\n", count(act.boards.size(), "board"), done,
+             act.boards.empty() ? "none is known yet" : some(act.boards));
   return exit_go;
 }
 
@@ -126,7 +130,8 @@ int hold(Desk& desk) {
   return to_boards(desk, "hold", "held", none, std::move(act));
 }
 
-/// Lifts every hold that is in force on the chosen boards.
+/// Lifts every hold that is in force on the chosen boards. What names an order, a reel or a lot alone ends the holds by
+/// just that, for boards that become known later too.
 int lift(Desk& desk, const std::string& kind) {
   Transaction transaction(desk.db(), Transaction::Kind::write);
   const auto chosen = chosen_boards(desk.db(), desk.told.boards);
@@ -135,13 +140,20 @@ int lift(Desk& desk, const std::string& kind) {
   for (const std::string& serial : chosen.value())
     for (const HoldOn& hold : read_board_now(desk.db(), serial).holds)
       boards_by_hold[std::string(bytes(hold.uuid))].push_back(serial);
+  ActRecord rule;
+  add_rule(desk.told.boards, rule);
+  std::set<std::string> ended;
+  for (const ActRecord& hold : rules_in_force(desk.db()))
+    if (hold.values == rule.values) ended.insert(std::string(bytes(hold.uuid)));
+  for (const std::string& hold : ended) boards_by_hold[hold];
   if (boards_by_hold.empty()) return fail(usage("none of these boards is held", "nothing was recorded"));
   std::size_t lifted = 0;
   for (auto& [hold, boards] : boards_by_hold) {
     ActRecord act = desk.act(kind);
     act.ends = uuid_from_bytes(hold);
     act.boards = std::move(boards);
-    lifted += act.boards.size();
+    if (ended.contains(hold)) act.values = rule.values;
+    lifted += std::max<std::size_t>(act.boards.size(), 1);
     add_act(desk.db(), desk.uuids(), act);
   }
   if (const auto recorded = transaction.commit(); !recorded) return fail(recorded.error());
@@ -252,16 +264,18 @@ int holds(Store& store) {
   if (!all.empty())
     for (const std::string& serial : serials)
       for (const HoldOn& hold : read_board_now(db, serial).holds) open[std::string(bytes(hold.uuid))].push_back(serial);
+  std::set<Uuid> rules;
+  for (const ActRecord& act : rules_in_force(db)) rules.insert(act.uuid);
   if (const auto done = reading.commit(); !done) return fail(done.error());
   std::size_t shown = 0;
   for (const ActRecord& act : all) {
     const auto found = open.find(std::string(bytes(act.uuid)));
-    if (found == open.end() && act.values.empty()) continue;
+    if (found == open.end() && !rules.contains(act.uuid)) continue;
     const std::vector<std::string> boards = found == open.end() ? std::vector<std::string>() : found->second;
-    if (boards.empty()) continue;
     ++shown;
     fmt::print("{}  {}  {}\n    {}{}: {}\n", utc_text(act.at_us), printable(act.who), printable(act.reason),
-               count(boards.size(), "board"), act.about.empty() ? "" : " by " + printable(act.about), some(boards));
+               count(boards.size(), "board"), act.about.empty() ? "" : " by " + printable(act.about),
+               boards.empty() ? "none is known yet" : some(boards));
   }
   if (shown == 0) fmt::print("No board is held.\n");
   return exit_go;
