@@ -2,6 +2,7 @@
 
 #include <fmt/format.h>
 
+#include <algorithm>
 #include <vector>
 
 #include "base/error.hpp"
@@ -123,7 +124,16 @@ class Changing {
         "INSERT INTO feed(uuid, ord, designator, reel, poss_from, cert_from, cert_to, poss_to, repair, since_us, "
         "known_us, entered) VALUES(?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
         Blob{bytes(uuid)}, place_.order, change_.designator, feed.reel, feed.poss_from, feed.cert_from, feed.cert_to,
-        feed.poss_to, repair, repair ? std::optional(change_.at_us) : std::nullopt, change_.at_us, entry_);
+        feed.poss_to, repair, repair ? std::optional(after_repairs()) : std::nullopt, change_.at_us, entry_);
+  }
+
+  /// Later than every repair of the place on record, though the clock stepped back since.
+  std::int64_t after_repairs() {
+    const auto last = db_.first(
+        "SELECT max(since_us) FROM feed WHERE ord = ? AND designator = ? AND poss_from = ? AND repair = 1 AND "
+        "dropped_us IS NULL",
+        place_.order, change_.designator, place_.build_no);
+    return std::max(change_.at_us, last.value_or(change_.at_us - 1) + 1);
   }
 
   Result<FeedChanged> finish() {
