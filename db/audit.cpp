@@ -379,6 +379,8 @@ void Audit::check_counts() {
       "SELECT c.name FROM credential c WHERE NOT EXISTS(SELECT 1 FROM act a WHERE a.kind = 'person' AND "
       "a.about = c.name)",
       "a person that no record names");
+  none("SELECT about FROM act WHERE kind = 'person' AND about NOT IN (SELECT name FROM credential)",
+       "a person on record who is not registered");
   check_people();
   none(
       "SELECT serial FROM board b WHERE NOT EXISTS(SELECT 1 FROM build WHERE board = b.id) AND "

@@ -45,7 +45,7 @@ std::optional<Error> fault_of(Database& database, const PersonChange& change, co
     return usage(fmt::format("the password has fewer than {} characters", shortest_password), "choose a longer one");
   if (change.role == engineer_role && !change.gone && !change.password && (!before || before->password.empty()))
     return usage("an engineer needs a password", "give one");
-  const auto bearer = change.badge.empty() ? std::nullopt : person_of_badge(database, change.badge);
+  const auto bearer = change.badge.empty() || change.gone ? std::nullopt : person_of_badge(database, change.badge);
   if (bearer && bearer->name != change.name)
     return usage(fmt::format("{} bears this badge", bearer->name), "give each person a badge of their own");
   return std::nullopt;
@@ -67,7 +67,8 @@ Result<Done> change_person(Database& database, UuidMaker& uuids, const PersonCha
   act.station = change.station;
   act.who = change.by;
   act.reason = change.gone ? "leaves" : change.role;
-  act.values = {{"role", change.role}, {"badge", change.badge}, {"password", fingerprint(kept)}};
+  act.values = {
+      {"role", change.role}, {"badge", change.gone ? std::string() : change.badge}, {"password", fingerprint(kept)}};
   act.values["gone"] = change.gone ? "yes" : "no";
   add_act(database, uuids, act);
   if (change.password) database.run("UPDATE credential SET password = ? WHERE name = ?", hash, change.name);

@@ -30,7 +30,7 @@ struct PersonNow {
 struct PersonChange {
   std::string name, role, badge;
   std::optional<std::string> password;  ///< a new one
-  bool gone{false};
+  bool gone{false};                     ///< gives the badge back: another may bear it
   std::string by, station;
   std::int64_t at_us{};
 };
