@@ -257,6 +257,7 @@ class Line final : public LineHost, public Observer, public Person {
       return Done{};
     });
     --writing_;
+    if (ended_) quit();
     session_.reel_changed(*changed);
     take_waiting();
   }

@@ -22,6 +22,12 @@ std::string trimmed(std::string text) {
   return text;
 }
 
+/// A password may begin or end with blanks.
+std::string without_end(std::string text) {
+  while (!text.empty() && (text.back() == '\r' || text.back() == '\n')) text.pop_back();
+  return text;
+}
+
 const FindingRow* decider(const TrialEnd& end) {
   const int at = end.outcome.deciding;
   return at >= 0 && at < static_cast<int>(end.findings.size()) ? &end.findings[static_cast<std::size_t>(at)] : nullptr;
@@ -128,6 +134,7 @@ std::string LineSession::state_sentence() {
 }
 
 void LineSession::take(std::string scan) {
+  const std::string typed = without_end(scan);
   scan = trimmed(std::move(scan));
   const auto card = card_of(scan);
   switch (state_) {
@@ -138,7 +145,7 @@ void LineSession::take(std::string scan) {
     case State::badge:
       return take_badge(scan);
     case State::password:
-      return take_password(scan);
+      return take_password(typed);
     case State::esd:
       return take_esd(scan);
     case State::ready:
@@ -166,7 +173,7 @@ void LineSession::take(std::string scan) {
     case State::stopped:
       return take_stopped(scan);
     case State::stop_password:
-      if (!host_.password_fits(person_, scan)) {
+      if (!host_.password_fits(person_, typed)) {
         say(texts_.say("stopped"), Shape::bar, {stop_text_, texts_.say("wrong_password")}, {});
         return enter(State::stopped);
       }
@@ -183,6 +190,7 @@ void LineSession::take(std::string scan) {
 
 void LineSession::take_badge(const std::string& scan) {
   if (scan.empty() || card_of(scan)) return show();
+  if (is_serial(scan)) return refuse(texts_.say("unknown_badge"));
   const auto found = host_.person(scan);
   if (host_.anybody_registered()) {
     if (!found || found->gone) return refuse(texts_.say("unknown_badge"));
@@ -218,6 +226,7 @@ ActRecord LineSession::act(const std::string& kind) const {
 
 void LineSession::log_in() {
   who_ = person_.name;
+  engineer_ = person_.role == engineer_role;
   ActRecord record = act("log-in");
   record.values["role"] = person_.role;
   record.values["wrist strap"] = "checked";
@@ -281,6 +290,20 @@ void LineSession::take_trying(const std::string& scan) {
   show();
 }
 
+/// A board scanned where a person is wanted: before people are registered, any other text is taken for a name.
+bool LineSession::is_serial(const std::string& scan) const {
+  const SerialForm& form = setup_.plan.plan.serial;
+  return !form.pattern.empty() && fault_of(form, scan) == SerialFault::none;
+}
+
+/// Why these files are none for an operator: they differ from the order's own revision, or from one adopted since the
+/// log-in.
+std::optional<std::string> LineSession::not_in_force(const std::string& order) {
+  const AdoptedNow adopted = host_.adopted(order);
+  if (adopted.differing.empty() || engineer_) return std::nullopt;
+  return texts_.say("not_adopted", {{"what", adopted.differing}, {"number", std::to_string(adopted.number)}});
+}
+
 /// Why the board is not of this line; `order` becomes its order.
 std::optional<std::string> LineSession::misplaced(const BoardNow& board, const std::string& scan, std::string& order) {
   const std::string& ours = setup_.plan.plan.board.product;
@@ -328,6 +351,7 @@ void LineSession::take_serial(const std::string& scan) {
   const BoardNow board = host_.board(scan);
   std::string order;
   if (const auto why = misplaced(board, scan, order)) return refuse(*why);
+  if (const auto why = not_in_force(order)) return refuse(*why);
   if (const Bar bar = board.standing.may_try(setup_.plan.plan.line.retests); bar != Bar::none)
     return refuse(barred(bar, board));
   serial_ = board.serial;
@@ -364,7 +388,9 @@ void LineSession::trial_ended(const TrialStart& start, const TrialEnd& end, cons
   const std::string then = texts_.say(again ? "retest" : "no_retest");
   if (judgement == Judgement::go) {
     ++shift_.go;
-    const bool waits = board_ && board_->standing.ever_missed();
+    Standing now = board_ ? board_->standing : Standing();
+    now.add({BoardEvent::Kind::tried, {}, Judgement::go, false});
+    const bool waits = now.waits_for_review();
     say(texts_.say("word_go"), Shape::disc, std::move(lines), texts_.say(waits ? "go_waits" : "go_action"));
   } else if (judgement == Judgement::no_go) {
     ++shift_.no_go;
@@ -415,6 +441,7 @@ void LineSession::stop(const std::string& cause, const std::string& kind) {
 
 void LineSession::take_stopped(const std::string& scan) {
   if (scan.empty() || card_of(scan)) return show();
+  if (is_serial(scan)) return refuse(texts_.say("not_for_operators"));
   const auto found = host_.person(scan);
   if (!host_.anybody_registered()) {
     person_ = {scan, std::string(engineer_role), {}, {}, false};
@@ -426,7 +453,7 @@ void LineSession::take_stopped(const std::string& scan) {
 }
 
 void LineSession::take_stop_reason(const std::string& typed) {
-  if (typed.empty() || card_of(typed)) return show();
+  if (typed.empty() || card_of(typed) || is_serial(typed)) return show();
   ActRecord record = act(stop_kind_ == stop_by_article ? "approve" : "go-on");
   record.who = person_.name;
   record.reason = typed;

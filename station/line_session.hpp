@@ -130,7 +130,9 @@ class LineSession {
   void take_ready(const std::string& scan);
   void take_trying(const std::string& scan);
   void take_serial(const std::string& scan);
+  std::optional<std::string> not_in_force(const std::string& order);
   std::optional<std::string> misplaced(const BoardNow& board, const std::string& scan, std::string& order);
+  bool is_serial(const std::string& scan) const;
   std::string barred(Bar bar, const BoardNow& board) const;
   void take_reel_first(const std::string& scan);
   void take_stopped(const std::string& scan);
@@ -151,6 +153,7 @@ class LineSession {
   PersonNow person_;               ///< whose password is awaited
   std::optional<BoardNow> board_;  ///< under trial, as it stood before
   int same_cause_{0};
+  bool engineer_{false};  ///< is logged in
 };
 
 }  // namespace jigwright
