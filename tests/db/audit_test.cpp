@@ -5,21 +5,67 @@
 #include <array>
 #include <fstream>
 #include <random>
+#include <set>
 
 #include "db/columns.hpp"
+#include "db/journal.hpp"
+#include "db/people.hpp"
 #include "db/sqlite.hpp"
-#include "tests/db/room.hpp"
+#include "tests/db/desk.hpp"
 
 using namespace jigwright;
 using room::must;
 
 namespace {
 
-std::shared_ptr<const SourceText> csv(const std::string& name, const std::string& text) {
-  auto out = std::make_shared<SourceText>();
-  out->name = name;
-  out->text = text;
-  return out;
+using room::csv;
+
+void add_people(Store& store) {
+  const auto change = [&](const PersonChange& person) { must(change_person(store.database(), store.uuids(), person)); };
+  change({"Ann", "operator", "B-1", {}, false, "B. Boss", "office", room::noon_us});
+  change({"Eve", "engineer", "B-2", "tall trees", false, "B. Boss", "office", room::noon_us});
+  for (const bool gone : {false, true})
+    change({"Old", "operator", "B-3", {}, gone, "B. Boss", "office", room::noon_us});
+}
+
+/// Acts of every form: boards, values, a second person, what they end, the trial they are about; a feed taken back, a
+/// repair's feed, a revision, and a trial under it.
+void add_acts(Store& store) {
+  ActRecord log_in = room::act("log-in", {});
+  log_in.values = {{"wrist strap", "checked"}};
+  room::write(store, log_in);
+  room::write(store, room::act("log-out", {}));
+  add_people(store);
+  room::write(store, room::act("repair", {"TB-01"}));
+  const OpenTrial miss = room::try_board(store, "TB-98", Judgement::no_go);
+  room::try_board(store, "TB-98", Judgement::go);
+  ActRecord review = room::act("review", {"TB-98"});
+  review.trial = miss.uuid;
+  room::write(store, review);
+  const Uuid hold = room::hold(store, {"TB-98", "TB-99"}, "a crack");
+  room::lift(store, "release", hold, {"TB-98"});
+  room::hold_by(store, "reel", "R-2", {"TB-03"});
+  ActRecord ship = room::act("ship", {"TB-98"});
+  ship.about = "Pier Labs";
+  ship.second = "Q. Lead";
+  room::write(store, ship);
+  ActRecord alias = room::act("alias", {"TB-03"});
+  alias.about = "NEW-3";
+  room::write(store, alias);
+  must(
+      change_reel(store.database(), store.uuids(), {"U7", "R-1", "TB-03", {}, 0, "office", "C. Clerk", room::noon_us}));
+  must(add_repair_feed(store.database(), store.uuids(),
+                       {"U7", "R-1", "TB-01", {}, 0, "office", "T. Technician", room::noon_us}));
+  must(adopt(store.database(), store.uuids(),
+             {{"[plan]", "[jig]", "[limits] 2"},
+              "WO-1",
+              "office",
+              "E. Engineer",
+              "Q. Lead",
+              "tighter",
+              false,
+              room::noon_us}));
+  room::try_board(store, "TB-02", Judgement::go);
 }
 
 /// Something in every table and nearly every column.
@@ -41,6 +87,7 @@ void fill(const std::string& path) {
   room::try_board(*store, "TB-02", Judgement::void_);
   room::try_board(*store, "TB-99", Judgement::go);  // in no list
   must(store->begin_trial(room::start("TB-03")));   // killed
+  add_acts(*store);
 }
 
 struct Closing {
@@ -79,7 +126,8 @@ void add(std::string& out, const BoardShown& shown) {
            std::to_string(t.took_ms.value_or(-1)) + t.operator_name + t.station + t.program + t.plan + t.limit_set +
            t.depth + std::to_string(t.nest) + ' ' + std::to_string(t.limit_revision) +
            std::to_string(static_cast<int>(t.judgement)) + t.void_reason + t.unsafe + t.deciding.value_or("none") +
-           std::to_string(t.ambient_C.value_or(-1)) + ' ' + std::to_string(t.missed) + '\n';
+           std::to_string(t.ambient_C.value_or(-1)) + ' ' + std::to_string(t.missed) + ' ' +
+           std::to_string(t.adopted.value_or(-1)) + '\n';
     for (const ShownFinding& f : t.findings) {
       out +=
           label(f.metric.name) + std::string(symbol(f.metric.unit)) + std::to_string(static_cast<int>(f.metric.about));
@@ -105,6 +153,49 @@ void add(std::string& out, const MetricColumns& columns) {
   }
 }
 
+void add(std::string& out, const BoardNow& b) {
+  out += b.serial + ' ' + b.scanned + ' ' + std::to_string(b.known) + b.order + ' ' + b.product +
+         std::to_string(b.build_no.value_or(-1)) + ' ' + std::string(word(b.standing.state())) + b.shipped_to + ' ' +
+         std::to_string(static_cast<int>(b.standing.judgement().value_or(Judgement::void_))) +
+         std::to_string(b.standing.trials()) + ' ' + std::to_string(b.standing.trials_since_repair()) + ' ' +
+         sentence(b.standing.may_try(1), b) + sentence(b.standing.may_ship(), b) + text(Uuid{}) + '\n';
+  for (const HoldOn& h : b.holds)
+    out += text(h.uuid) + h.who + ' ' + h.reason + ' ' + h.about + ' ' + std::to_string(h.at_us) + '\n';
+}
+
+void add(std::string& out, const ActRecord& a) {
+  out += text(a.uuid) + a.kind + ' ' + a.station + ' ' + std::to_string(a.at_us) + a.who + ' ' + a.second + ' ' +
+         a.reason + ' ' + a.about + ' ' + (a.ends ? text(*a.ends) : "") + ' ' + (a.trial ? text(*a.trial) : "") + '\n';
+  for (const std::string& serial : a.boards) out += serial + ' ';
+  for (const auto& [key, value] : a.values) out += key + '=' + value + ' ';
+}
+
+void add(std::string& out, const Adopted& a) {
+  out += std::to_string(a.number) + a.order + ' ' + a.plan + a.jig + a.limits + a.parent + a.authority + ' ' +
+         std::to_string(a.earlier_stand) + a.who + ' ' + a.second + ' ' + a.reason + std::to_string(a.at_us) + '\n';
+}
+
+/// Acts of every kind, what they make of boards and people, what is in force, who did what.
+void add_acts(std::string& out, Database& db) {
+  for (const char* kind :
+       {"log-in", "log-out", "hold", "release", "review", "repair", "ship", "alias", "adopt", "person"})
+    for (const ActRecord& a : acts_of(db, kind)) add(out, a);
+  for (const char* serial : {"TB-01", "TB-02", "TB-03", "TB-98", "TB-99", "NEW-3"}) {
+    const auto read = board_now(db, serial);
+    read.ok() ? add(out, read.value()) : void(out += describe(read.error()));
+  }
+  for (const PersonNow& p : all_people(db))
+    out += p.name + ' ' + p.role + ' ' + p.badge + ' ' + p.password + std::to_string(p.gone) + '\n';
+  out += std::to_string(has_engineers(db));
+  for (const Adopted& a : all_adopted(db)) add(out, a);
+  if (const auto in_force = adopted_for(db, "WO-1")) add(out, *in_force);
+  const auto log = read_log(db, {}, 100);
+  if (!log.ok()) return void(out += describe(log.error()));
+  for (const LogLine& l : log.value())
+    out += l.station + std::to_string(l.epoch) + ' ' + std::to_string(l.seq) + ' ' + std::to_string(l.at_us) + l.who +
+           ' ' + l.what + ' ' + l.on + '\n';
+}
+
 /// What every question and every view says: trials, findings, limits; carriers; the files' text and readings too.
 std::string answers(const std::string& path) {
   std::string out;
@@ -127,6 +218,9 @@ std::string answers(const std::string& path) {
     out += rows(handle.get(),
                 "SELECT t.uuid, s.kind, s.version FROM trial t JOIN reduction_step s ON s.reduction = t.reduction "
                 "ORDER BY 1, 2");
+    out += rows(handle.get(),
+                "SELECT f.uuid, f.dropped_us, e.uuid, e.kind, e.name, e.who FROM feed f LEFT JOIN entered e ON "
+                "e.id = f.dropped_by ORDER BY 1");
   }
   StoreOptions reading;
   reading.access = StoreOptions::Access::read;
@@ -141,6 +235,7 @@ std::string answers(const std::string& path) {
     const auto read = read_metric(store.value()->database(), step, name, variant);
     read.ok() ? add(out, read.value()) : void(out += describe(read.error()));
   }
+  add_acts(out, store.value()->database());
   return out;
 }
 
@@ -187,12 +282,13 @@ TEST_CASE("a store as the program made it is whole, and the page's figures are i
   const auto report = must(audit(room::open(folder.file("s.db"))->database()));
   for (const Difference& d : report.differences) FAIL_CHECK(d.what);
   CHECK(report.whole());
-  CHECK(report.records == 7);  // 3 lists, 4 trials
-  CHECK(report.trials == 4);
+  CHECK(report.records == 26);  // 3 lists, 2 feeds, 7 trials, 14 acts
+  CHECK(report.trials == 7);
   CHECK(report.open == 1);
-  CHECK(report.lists == 3);
-  CHECK(report.findings == 12);
-  REQUIRE(report.heads.size() == 2);  // "station" entered the lists, "bench 1" tried
+  CHECK(report.lists == 5);
+  CHECK(report.acts == 14);
+  CHECK(report.findings == 21);
+  REQUIRE(report.heads.size() == 3);  // "station" entered the lists, "bench 1" tried, the office did the rest
   CHECK(report.heads[0].hash.size() == 32);
 }
 
@@ -272,6 +368,12 @@ TEST_CASE("a trial marked to speak for its board in place of a NO-GO shows") {
   CHECK(report.differences[0].what == "board TB-01: the trial that speaks for it is marked wrongly");
 }
 
+TEST_CASE("an act moved to another place among its board's trials shows") {
+  CHECK(only_record(after("UPDATE act_board SET attempts = 1 WHERE attempts = 2")).record == "act");
+  const AuditReport report = after("UPDATE act_board SET attempts = attempts + 1");
+  CHECK(report.found >= 6);  // each act that names boards
+}
+
 TEST_CASE("a foreign trigger and a changed view show") {
   const AuditReport report = after(
       "CREATE TRIGGER t AFTER INSERT ON trial BEGIN SELECT 1; END; DROP VIEW carries; CREATE VIEW carries AS SELECT 1");
@@ -287,6 +389,7 @@ TEST_CASE("any single value changed in any column, if it changes an answer, show
   const std::string whole = bytes_of(path), before = answers(path);
   REQUIRE(passes(path));
   int changed = 0, told = 0, columns = 0;
+  std::set<std::string> told_of;
   std::vector<std::pair<std::string, std::string>> places;
   {
     const auto handle = plain(path);
@@ -314,12 +417,14 @@ TEST_CASE("any single value changed in any column, if it changes an answer, show
       {
         const auto handle = plain(path);
         const std::string sql = "UPDATE OR IGNORE " + table + " SET \"" + column + "\" = " + value + " WHERE (\"" +
-                                column + "\") IN (SELECT \"" + column + "\" FROM " + table + " LIMIT 1) OR \"" +
-                                column + "\" IS NULL";
+                                column + "\") IN (SELECT \"" + column + "\" FROM " + table + " WHERE \"" + column +
+                                "\" IS NOT NULL LIMIT 1) OR \"" + column + "\" IS NULL";
         done = sqlite3_exec(handle.get(), sql.c_str(), nullptr, nullptr, nullptr) == SQLITE_OK &&
                sqlite3_changes(handle.get()) > 0;
       }
       if (!done || answers(path) == before) continue;
+      // A restored store has no password that was set after the backup; who has none may do nothing.
+      if (table == "credential" && column == "password" && (value == "NULL" || value == "''")) continue;
       ++changed;
       CAPTURE(table);
       CAPTURE(column);
@@ -327,10 +432,20 @@ TEST_CASE("any single value changed in any column, if it changes an answer, show
       const bool whole_still = passes(path);
       CHECK(!whole_still);
       told += whole_still ? 0 : 1;
+      if (!whole_still) told_of.insert(table + "." + column);
     }
   }
+  for (const std::string must_be :
+       {"act.uuid",        "act.station",     "act.kind",           "act.at_us",        "act.who",
+        "act.second",      "act.reason",      "act.about",          "act.ends",         "act.trial",
+        "act_board.act",   "act_board.board", "act_board.attempts", "act_value.act",    "act_value.key",
+        "act_value.value", "credential.name", "credential.role",    "credential.badge", "credential.password",
+        "credential.gone", "feed.dropped_us", "feed.dropped_by",    "trial.adopted"}) {
+    CAPTURE(must_be);
+    CHECK(told_of.contains(must_be));
+  }
   MESSAGE(columns, " columns, ", changed, " changes that alter an answer, ", told, " told of");
-  CHECK(changed > 80);
+  CHECK(changed > 130);
 }
 
 /// Small pages, so that most bytes of the file are in use.
