@@ -1,5 +1,7 @@
 #include "db/line_questions.hpp"
 
+#include <set>
+
 #include "db/act.hpp"
 #include "db/boards.hpp"
 #include "db/digest.hpp"
@@ -8,13 +10,28 @@
 namespace jigwright {
 namespace {
 
-std::vector<std::string> serials_of(Database& database, const std::string& order) {
-  std::vector<std::string> out;
-  Query q = database.query(
-      "SELECT b.serial FROM product_order o JOIN build d ON d.ord = o.id JOIN board b ON b.id = d.board "
-      "WHERE o.name = ?",
-      order);
-  while (q.next()) out.push_back(q.text(0));
+void take(Query q, std::set<std::string>& serials) {
+  while (q.next()) serials.insert(q.text(0));
+}
+
+/// Boards of the order that a hold has named or takes in: few, where most boards of an order were never held.
+std::set<std::string> perhaps_held(Database& database, const std::string& order) {
+  std::set<std::string> out;
+  take(database.query("SELECT b.serial FROM act a JOIN act_board x ON x.act = a.id JOIN build d ON d.board = x.board "
+                      "JOIN product_order o ON o.id = d.ord JOIN board b ON b.id = d.board WHERE a.kind = 'hold' AND "
+                      "o.name = ?",
+                      order),
+       out);
+  for (const ActRecord& rule : rules_in_force(database)) {
+    const std::string& by = rule.values.at("by");
+    BoardChoice choice;
+    choice.order = order;
+    if (by == "order" && rule.values.at("name") != order) continue;
+    if (by == "reel") choice.reel = rule.values.at("name");
+    if (by == "lot") choice.lot = rule.values.at("name");
+    const auto chosen = chosen_boards(database, choice);
+    if (chosen) out.insert(chosen.value().begin(), chosen.value().end());
+  }
   return out;
 }
 
@@ -32,9 +49,10 @@ Result<OrderCounts> order_counts(Database& database, const std::string& order) {
         order);
     if (q.next()) out = {q.integer(0), q.integer(1), q.integer(2), q.integer(4), 0, q.integer(3)};
   }
-  if (database.first("SELECT 1 FROM act WHERE kind = 'hold' LIMIT 1"))
-    for (const std::string& serial : serials_of(database, order))
-      if (!read_board_now(database, serial).holds.empty()) ++out.held;
+  for (const std::string& serial : perhaps_held(database, order)) {
+    const BoardNow board = read_board_now(database, serial);
+    if (board.build_no && board.order == order && !board.holds.empty()) ++out.held;
+  }
   if (const auto done = reading.commit(); !done) return done.error();
   return out;
 }

@@ -1,6 +1,7 @@
 #include "db/boards.hpp"
 
 #include "db/audit.hpp"
+#include "db/line_questions.hpp"
 #include "db/sqlite.hpp"
 #include "tests/db/desk.hpp"
 
@@ -246,6 +247,37 @@ TEST_CASE("a hold by rule ends with a release by the same rule; boards known lat
   room::enter(*s.store, {{"last.csv", room::places("WO-2", 4, 4, 24)}});
   CHECK(s.try_again("TB-23") == Bar::none);
   CHECK(s.try_again("TB-24") == Bar::none);
+}
+
+TEST_CASE("an order's counts: tried, GO, waiting, VOID, and held by name or by rule, once each") {
+  Shop s;
+  const auto counts = [&](const std::string& order) { return must(order_counts(s.store->database(), order)); };
+  CHECK(counts("WO-1").all == 10);
+  CHECK(counts("WO-1").held == 0);
+  s.tries("TB-01", go);
+  s.tries("TB-02", no_go);
+  s.tries("TB-02", go);
+  s.tries("TB-03", void_);
+  CHECK(counts("WO-1").tried == 3);
+  CHECK(counts("WO-1").go == 1);
+  CHECK(counts("WO-1").waiting == 1);
+  CHECK(counts("WO-1").voids == 1);
+  const Uuid named = room::hold(*s.store, {"TB-05", "TB-06", "TB-21"});
+  CHECK(counts("WO-1").held == 2);
+  CHECK(counts("WO-2").held == 1);
+  const Uuid reel = room::hold_by(*s.store, "reel", "R-2");  // places 5 to 10
+  CHECK(counts("WO-1").held == 6);
+  room::lift(*s.store, "release", named, {"TB-05"});
+  CHECK(counts("WO-1").held == 6);
+  room::lift_rule(*s.store, reel, "reel", "R-2", {});
+  CHECK(counts("WO-1").held == 1);
+  room::hold_by(*s.store, "lot", "L1");  // places 1 to 5
+  CHECK(counts("WO-1").held == 6);
+  CHECK(counts("WO-2").held == 1);
+  room::hold_by(*s.store, "order", "WO-2");
+  CHECK(counts("WO-2").held == 2);
+  CHECK(counts("WO-1").held == 6);
+  CHECK(counts("WO-3").all == 0);
 }
 
 TEST_CASE("boards are chosen by serial, order, reel and lot; all that is given must hold; by order and place") {
