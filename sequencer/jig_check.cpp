@@ -25,17 +25,19 @@ void check_beside(const ReadyPlan& plan, const CheckPlans& before, Faults& fault
                  "one check proves one jig: " + before.front()->plan.jig_file);
 }
 
-bool bad(Verdict v) {
-  return v == Verdict::missed || v == Verdict::invalid || v == Verdict::unsure;
+/// "relays: change (K12, meter to input); ... and 9 more".
+std::string some(const std::vector<std::string>& labels) {
+  constexpr std::size_t most = 4;
+  std::string out;
+  for (std::size_t i = 0; i < labels.size() && i < most; ++i) out += (i == 0 ? "" : "; ") + labels[i];
+  return labels.size() > most ? fmt::format("{} and {} more", out, labels.size() - most) : out;
 }
 
-std::string listed_findings(const TrialEnd& end, bool missed_only) {
-  std::string out;
-  for (const FindingRow& row : end.findings) {
-    if (missed_only ? row.judged.verdict != Verdict::missed : !bad(row.judged.verdict)) continue;
-    out += (out.empty() ? "" : "; ") + label(row.metric.name);
-  }
-  return out;
+std::string missed_findings(const TrialEnd& end) {
+  std::vector<std::string> out;
+  for (const FindingRow& row : end.findings)
+    if (row.judged.verdict == Verdict::missed) out.push_back(label(row.metric.name));
+  return some(out);
 }
 
 bool any_missed(const TrialEnd& end) {
@@ -51,15 +53,15 @@ bool at_load(const std::string& variant, const std::string& load) {
 PartSays reject_sample(const JigCheckPart& part, const TrialEnd& end) {
   if (end.outcome.judgement == Judgement::go)
     return {PartVerdict::failed, fmt::format("the reject sample is GO: the jig does not find it at {}", part.load)};
-  std::string elsewhere;
+  std::vector<std::string> elsewhere;
   bool there = false;
   for (const FindingRow& row : end.findings) {
     if (row.judged.verdict != Verdict::missed) continue;
     const bool named = row.metric.name.step == part.must_miss && at_load(row.metric.name.variant, part.load);
     there = there || named;
-    if (!named) elsewhere += (elsewhere.empty() ? "" : "; ") + label(row.metric.name);
+    if (!named) elsewhere.push_back(label(row.metric.name));
   }
-  if (!elsewhere.empty()) return {PartVerdict::failed, "missed elsewhere than at its load: " + elsewhere};
+  if (!elsewhere.empty()) return {PartVerdict::failed, "missed elsewhere than at its load: " + some(elsewhere)};
   if (end.outcome.judgement == Judgement::no_go && there) return {PartVerdict::met, {}};
   return {PartVerdict::in_doubt, end.outcome.void_reason};
 }
@@ -95,22 +97,30 @@ PartSays judge_part(const JigCheckPart& part, const TrialEnd& end, bool recorded
   if (!recorded) return {PartVerdict::in_doubt, end.outcome.void_reason};
   if (!end.safe_state.empty()) return {PartVerdict::failed, "the safe state is not confirmed: " + end.safe_state};
   if (part.purpose == Purpose::reject_sample) return reject_sample(part, end);
-  if (any_missed(end)) return {PartVerdict::failed, listed_findings(end, true)};
+  if (any_missed(end)) return {PartVerdict::failed, missed_findings(end)};
   if (end.outcome.judgement == Judgement::go) return {PartVerdict::met, {}};
   return {PartVerdict::in_doubt, end.outcome.void_reason};
 }
 
-std::vector<std::string> untold_relays(const CheckPlans& plans) {
+std::vector<std::string> untold(const CheckPlans& plans) {
   std::vector<std::string> out;
   if (plans.empty()) return out;
+  const auto told = [&](const std::string& variant, std::string_view name) {
+    return std::any_of(plans.begin(), plans.end(), [&](const auto& plan) {
+      return std::any_of(plan->full.metrics.begin(), plan->full.metrics.end(), [&](const Metric& m) {
+        return m.about == About::jig && m.name.variant == variant && (name.empty() || m.name.name == name);
+      });
+    });
+  };
+  std::string series;
   for (const Relay& relay : plans.front()->jig->relays) {
     const std::string words = relay_in_words(relay);
-    const bool told = std::any_of(plans.begin(), plans.end(), [&](const auto& plan) {
-      return std::any_of(plan->full.metrics.begin(), plan->full.metrics.end(),
-                         [&](const Metric& m) { return m.about == About::jig && m.name.variant == words; });
-    });
-    if (!told) out.push_back(words);
+    if (!told(words, {}))
+      out.push_back(words);
+    else if (relay.role == Role::load && !told(words, "series"))
+      series += (series.empty() ? "series resistance of " : ", ") + relay.of;
   }
+  if (!series.empty()) out.push_back(series);
   return out;
 }
 

@@ -24,13 +24,14 @@ enum class PartVerdict : std::uint8_t {
 
 struct PartSays {
   PartVerdict verdict{PartVerdict::in_doubt};
-  std::string why;  ///< empty when met: each finding that is missed, or what else ended it
+  std::string why;  ///< empty when met: the first findings that are missed, or what else ended it
 };
 
 /// @param recorded  only a recorded trial proves anything
 PartSays judge_part(const JigCheckPart& part, const TrialEnd& end, bool recorded);
 
-/// Relays that no finding of any part tells: "K22, supply to board".
-std::vector<std::string> untold_relays(const CheckPlans& plans);
+/// What no finding of any part tells, and no check passes: relays ("K22, supply to board"), and loads whose series
+/// resistance their reactance hides.
+std::vector<std::string> untold(const CheckPlans& plans);
 
 }  // namespace jigwright

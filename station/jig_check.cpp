@@ -29,6 +29,7 @@ struct Told {
   std::string plan, operator_name, program;
   std::vector<std::string> faults, answers;
   std::uint64_t seed{1};
+  int nest{1};
   bool yes{false};
 };
 
@@ -93,7 +94,7 @@ class Check {
     Ask question;
     question.step = plan.id;
     question.question = plan.check.place;
-    const auto answer = co_await person_->ask(1, question, clock_->now() + from_seconds(answer_allowance_s));
+    const auto answer = co_await person_->ask(told_.nest, question, clock_->now() + from_seconds(answer_allowance_s));
     if (!answer.ok()) co_return describe(answer.error());
     const bool yes = answer.value().state == ReadingState::ok && answer.value().value == 1;
     co_return yes ? "" : fmt::format("answered no: {}", plan.check.place);
@@ -101,7 +102,7 @@ class Check {
 
   Task<void> try_part(CheckedPart& part) {
     trials_ = std::make_unique<Trials>(io_, *bench_, part.plan, *watcher_, *person_, *recorder_, setup(*part.plan));
-    TrialResult result = co_await trials_->run(1, part.plan->plan.check.serial, "");
+    TrialResult result = co_await trials_->run(told_.nest, part.plan->plan.check.serial, "");
     part.says = judge_part(part.plan->plan.check, result.end, result.recorded);
     out_.store_failed = out_.store_failed || !result.recorded;
     if (result.recorded) out_.uuids[part.plan->plan.id] = text(result.uuid);
@@ -157,6 +158,7 @@ Result<std::vector<std::string>> record(const Outcomes& check, const Told& told,
   act.reason = verdict == PartVerdict::met ? "ok" : what_failed(parts);
   act.values = check.uuids;
   act.values["result"] = word(verdict);
+  act.values["nest"] = std::to_string(told.nest);
   return write_jig_check(
       store.database(), store.uuids(), act,
       fmt::format("tried since the last good check of {}; the check failed: {}", act.about, act.reason));
@@ -204,6 +206,9 @@ int jig_check(const Told& told, const StationFile& station, const std::string& s
     return exit_files;
   }
   if (const auto words = check_fault_words(*plans.front()->jig, told.faults); !words.ok()) return fail(words.error());
+  if (told.nest > plans.front()->jig->nests)
+    return fail({Error::Kind::usage, fmt::format("the jig has no nest {}", told.nest), "--nest",
+                 fmt::format("its nests count from 1 to {}", plans.front()->jig->nests)});
   StoreOptions how;
   how.backups = station.backups;
   auto store = Store::open(store_path, how);
@@ -212,7 +217,7 @@ int jig_check(const Told& told, const StationFile& station, const std::string& s
   // The recorder's thread is done with the store before the act is written.
   const Outcomes check = Check(told, station, plans, scenario, std::move(answers.value()), *store.value()).play();
   const auto held = record(check, told, station, *store.value());
-  fmt::print("{}", render(check.parts, untold_relays(plans)));
+  fmt::print("{}", render(check.parts, untold(plans)));
   if (held.ok()) tell_held(held.value());
   store.value()->finish_upkeep();
   for (const std::string& news : store.value()->take_news()) tell(news);
@@ -230,6 +235,7 @@ JigCheckCommand::JigCheckCommand(CLI::App& app) : words_(std::make_unique<Words>
   Told& told = words_->told;
   words_->app = app.add_subcommand("jig-check", "The jig proves itself: relays, zeros, loads, source, known boards");
   words_->app->add_option("PLAN", told.plan, "plan of the first part; it names the next")->required();
+  words_->app->add_option("--nest", told.nest, "which nest of the jig (default: 1)")->check(CLI::PositiveNumber);
   words_->app->add_option("--operator", told.operator_name, "who checks, for the record");
   words_->app->add_option("--answer", told.answers, "PLAN-ID=yes: that part's thing lies in the nest")
       ->allow_extra_args(false);

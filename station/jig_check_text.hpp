@@ -16,7 +16,7 @@ struct CheckedPart {
 };
 
 /// A line a part, below it a line a metric: of its variants the one with the least room (every one that is missed),
-/// with value and limit; then the relays that nothing tells, and one word.
+/// with value and limit; then what nothing tells, and one word.
 std::string render(const std::vector<CheckedPart>& parts, const std::vector<std::string>& untold);
 
 /// ok, failed or in doubt of them all: failed before in doubt, and a part not tried is in doubt.

@@ -1,13 +1,13 @@
 // Kind "load-check": each load of the jig at the pad of a sound board without power, and its relay both ways.
 //
-// `capacitance`  by the tone's level (tone_proof.hpp), less what the open output has
+// `capacitance`  by the tone's level (tone_proof.hpp), with Rp by the meter in ohm, less what the open output has
 // `released`     what still stands at the pad with all loads released again, beyond the jig's stray: put down to the
 //                largest load that it fits, the rest to the next; a smaller one behind a larger one is not seen
 // `stray`        what stands there before any load was closed
 // `leakage`      resistance beside the load, by the meter in ohm on the output with the load and without it: at least
 //                1 / (1/R - 1/R0 + 2u), R0 the open output's
 // `series`       resistance in series, of loads whose reactance at the highest tone is at most most_reactance_ohm: the
-//                pad's impedance |Z| = R V / V0 at a tone of series_tone_V (R, the tone's resistor, far above |Z|),
+//                pad's impedance |Z| = R V / V0 at a tone of loud_tone_V (R, the tone's path, far above |Z|),
 //                less the reactance: sqrt(|Z|^2 - (1/wC)^2). Our own derivation, from the divider. Of smaller loads no
 //                level here tells a few ohm.
 //
@@ -39,7 +39,11 @@ namespace {
 constexpr double tone_V = 0.2;
 /// Above it, but the load that is read holds the pad at a few millivolts; without it the tone's resistor limits the
 /// current into the board's output to a fifth of a milliampere.
-constexpr double series_tone_V = 2;
+constexpr double loud_tone_V = 2;
+/// The louder tone is taken where the other one's level is below so many times the detector's floor.
+constexpr double quiet_floors = 20;
+/// Tones keep this far above the lower end of the detector's band: there 1/20 of a first-order end loses 0.1 %.
+constexpr double above_band = 20;
 constexpr double most_reactance_ohm = 10;
 constexpr double tone_settle_taus = 5, tone_periods = 3;
 /// For a resistance beside a capacitor: e^-14 is 1 ppm.
@@ -65,7 +69,7 @@ struct OpenRead {
 
 struct LoadRead {
   Load load;
-  double frequency_Hz{};
+  double frequency_Hz{}, tone_V{};
   int tone{-1}, ohm{-1}, series{-1};
   int capacitance{-1}, released{-1}, leakage{-1}, series_metric{-1};
 };
@@ -78,6 +82,18 @@ struct Sweep {
   std::vector<LoadRead> loads;
 };
 
+/// The tone's path: its own resistor and the source's.
+ToneFacts tone_facts(const Jig& jig) {
+  return {tone_V, jig.source.tone_ohm + jig.source.output_ohm, jig.detector.of_reading, jig.source.tone_of_setting,
+          jig.detector.floor_V};
+}
+
+/// As if the tone were the usual one: level and floor in its scale.
+ToneFacts scaled(ToneFacts facts, double level_V) {
+  facts.floor_V *= tone_V / level_V;
+  return facts;
+}
+
 class SweepMaker {
  public:
   SweepMaker(const StepContext& context, const LoadCheckKeys& keys)
@@ -86,8 +102,7 @@ class SweepMaker {
   }
 
   Sweep make() {
-    const double low_Hz = jig_.source.tone_low_Hz, high_Hz = jig_.source.tone_high_Hz;
-    sweep_.open_Hz = {low_Hz, std::sqrt(low_Hz * high_Hz), high_Hz};
+    sweep_.open_Hz = {low_Hz(), std::sqrt(low_Hz() * high_Hz()), high_Hz()};
     for (const Load& load : jig_.loads)
       if (jig_.has(Role::load, load.id)) sweep_.loads.push_back({load});
     sweep_.before = add_open("before");
@@ -103,16 +118,18 @@ class SweepMaker {
 
  private:
   double R0() const { return context_.board.unpowered_ohm; }
-  double parallel_ohm() const { return parallel(jig_.source.tone_ohm, R0()); }
+  double parallel_ohm() const { return parallel(facts().tone_ohm, R0()); }
+  double high_Hz() const { return jig_.source.tone_high_Hz; }
+  double low_Hz() const {
+    return std::min(std::max(jig_.source.tone_low_Hz, above_band * jig_.detector.low_Hz), high_Hz());
+  }
   double open_F() const { return jig_.stray_F + jig_.detector.input_F; }
   double largest_F() const {
     double most_F = 0;
     for (const Load& load : jig_.loads) most_F = std::max(most_F, load.capacitance_F);
     return most_F;
   }
-  ToneFacts facts() const {
-    return {tone_V, jig_.source.tone_ohm, jig_.detector.of_reading, jig_.source.tone_of_setting, jig_.detector.floor_V};
-  }
+  ToneFacts facts() const { return tone_facts(jig_); }
 
   /// Settles for the largest load, should its relay be welded.
   OpenRead add_open(const std::string& when) {
@@ -128,14 +145,15 @@ class SweepMaker {
 
   void add_load(LoadRead& read) {
     const double total_F = read.load.capacitance_F + open_F();
-    const double high_Hz = jig_.source.tone_high_Hz;
-    read.frequency_Hz = tone_frequency(parallel_ohm(), total_F, jig_.source.tone_low_Hz, high_Hz);
+    const bool loud = loud_tone_V <= jig_.source.max_V;
+    read.frequency_Hz = tone_frequency(parallel_ohm(), total_F, low_Hz(), high_Hz());
+    const double level_V = tone_level(facts(), parallel_ohm(), total_F, read.frequency_Hz);
+    read.tone_V = loud && level_V < quiet_floors * jig_.detector.floor_V ? loud_tone_V : tone_V;
     const std::string& id = read.load.id;
-    read.tone = sweep_.layout.add(tone("tone/" + id, id, &read.load, tone_V, read.frequency_Hz));
+    read.tone = sweep_.layout.add(tone("tone/" + id, id, &read.load, read.tone_V, read.frequency_Hz));
     read.ohm = add_ohm("ohm/" + id, &read.load);
-    if (1 / (2 * std::numbers::pi * high_Hz * read.load.capacitance_F) <= most_reactance_ohm &&
-        series_tone_V <= jig_.source.max_V)
-      read.series = sweep_.layout.add(tone("series/" + id, "series of " + id, &read.load, series_tone_V, high_Hz));
+    if (loud && 1 / (2 * std::numbers::pi * high_Hz() * read.load.capacitance_F) <= most_reactance_ohm)
+      read.series = sweep_.layout.add(tone("series/" + id, "series of " + id, &read.load, loud_tone_V, high_Hz()));
     ++group_;
   }
 
@@ -192,12 +210,12 @@ class SweepMaker {
   /// What the tone's finding of a sound load states.
   double tone_u(const LoadRead& read) const {
     const ToneBase base = tone_base(facts(), tone_level(facts(), parallel_ohm(), 0, sweep_.open_Hz.front()));
-    const auto of = [&](double F, double f_Hz) {
-      return tone_capacitance(facts(), base, tone_level(facts(), parallel_ohm(), F, f_Hz), f_Hz).u_F;
+    const auto of = [&](const ToneFacts& at, double F, double f_Hz) {
+      return tone_capacitance(at, base, tone_level(facts(), parallel_ohm(), F, f_Hz), f_Hz).u_F;
     };
     return Combined()
-        .add(of(read.load.capacitance_F + open_F(), read.frequency_Hz))
-        .add(of(open_F(), sweep_.open_Hz.back()))
+        .add(of(scaled(facts(), read.tone_V), read.load.capacitance_F + open_F(), read.frequency_Hz))
+        .add(of(facts(), open_F(), sweep_.open_Hz.back()))
         .u();
   }
 
@@ -215,7 +233,7 @@ class LoadCheckStep final : public Step {
     const Jig& jig = *context.jig;
     use_ = keys.use;
     ohm_range_ = jig.resistance_range(context.board.unpowered_ohm);
-    tone_ = {tone_V, jig.source.tone_ohm, jig.detector.of_reading, jig.source.tone_of_setting, jig.detector.floor_V};
+    tone_ = tone_facts(jig);
     high_Hz_ = jig.source.tone_high_Hz;
     open_F_ = jig.stray_F + jig.detector.input_F;
     sweep_ = SweepMaker(context, keys).make();
@@ -251,16 +269,18 @@ class LoadCheckStep final : public Step {
     int n{};
   };
 
-  /// The open output's level at the lowest tone gives Rp; where a large load hangs there already it does not, and the
-  /// meter's reading in ohm does.
+  /// Rp by the meter in ohm. The level at the lowest tone stands for the tone and the detector, whose errors then
+  /// cancel; where a large load hangs on the open output already, the level is worked out from Rp.
   std::optional<Base> base_of(const Records& played) const {
     const auto low = played.sample(sweep_.before.tones.front());
     const auto ohm = played.sample(sweep_.open_ohm);
     if (!low || !ohm) return std::nullopt;
     Base base{{}, worse(low->state, ohm->state), *ohm};
-    const double level_V = tone_level(tone_, parallel(tone_.tone_ohm, std::max(ohm->mean, 1.0)), 0, 0);
+    const double parallel_ohm = parallel(tone_.tone_ohm, std::max(ohm->mean, 1.0));
+    const double level_V = tone_level(tone_, parallel_ohm, 0, 0);
     const bool held_down = low->mean < (1 - rest_share) * level_V;
     base.tone = tone_base(tone_, held_down ? level_V : low->mean);
+    base.tone.parallel_ohm = parallel_ohm;
     return base;
   }
 
@@ -305,7 +325,8 @@ class LoadCheckStep final : public Step {
     const bool hidden = open.state == FindingState::measured && open.C.value_F > open_room * open_F_ &&
                         open.C.value_F * hidden_share > read.load.capacitance_F;
     if (const auto tone = played.sample(read.tone)) {
-      const auto all = tone_capacitance(tone_, base.tone, tone->mean, read.frequency_Hz);
+      const auto all =
+          tone_capacitance(scaled(tone_, read.tone_V), base.tone, tone->mean * tone_V / read.tone_V, read.frequency_Hz);
       const FindingState state = hidden ? FindingState::no_data : worse(open.state, tone->state);
       out.push_back(found(read.capacitance, worse(state, worse(open.state, tone->state)), all.value_F - open.C.value_F,
                           Combined().add(all.u_F).add(open.C.u_F).u(), tone->n + open.n));
@@ -332,7 +353,7 @@ class LoadCheckStep final : public Step {
   }
 
   Finding series(const LoadRead& read, const Sample& tone) const {
-    const double per_V = tone_.tone_ohm / series_tone_V;
+    const double per_V = tone_.tone_ohm / loud_tone_V;
     const double Z = tone.mean * per_V;
     const double X = 1 / (2 * std::numbers::pi * high_Hz_ * read.load.capacitance_F);
     const double R = std::sqrt(std::max(Z * Z - X * X, 0.0));

@@ -112,11 +112,11 @@ class PathZeroStep final : public Step {
 std::unique_ptr<Step> read_path_zero(TableReader& reader, const StepContext& context) {
   const CleanRead clean(reader, context);
   auto step = std::make_unique<PathZeroStep>();
-  const auto dwell = reader.quantity("dwell", Unit::second, Plausible{0, 600});
-  if (dwell && dwell->value < 0) reader.fault(dwell->region, "\"dwell\" must not be negative", "write \"5 s\"");
+  const double dwell_s =
+      reader.has("dwell") ? reader.need_not_negative("dwell", Unit::second, Plausible{0, 600}).value : 5;
   const MeterUse use = read_meter_use(reader, context, 10);
   if (!clean.ok()) return step;
-  step->lay_out(context, dwell ? dwell->value : 5, use);
+  step->lay_out(context, dwell_s, use);
   if (step->empty())
     reader.fault(reader.region(), "the jig has no path of the meter to the board", "take the step out");
   return step;

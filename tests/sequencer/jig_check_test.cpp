@@ -224,3 +224,71 @@ TEST_CASE("a silent instrument is VOID without a miss") {
     CHECK(bad(end).empty());
   }
 }
+
+namespace {
+
+JigCheckPart reject_part() {
+  JigCheckPart p;
+  p.purpose = Purpose::reject_sample;
+  p.must_miss = "sweep";
+  p.load = "1 nF";
+  return p;
+}
+
+TrialEnd missing(Judgement judgement, const std::vector<MetricName>& missed) {
+  TrialEnd end;
+  end.outcome.judgement = judgement;
+  for (const MetricName& name : missed) {
+    FindingRow row;
+    row.metric.name = name;
+    row.judged.verdict = Verdict::missed;
+    end.findings.push_back(row);
+  }
+  return end;
+}
+
+}  // namespace
+
+TEST_CASE("a reject sample is found only by NO-GO at its load and nowhere else") {
+  const JigCheckPart part = reject_part();
+  const MetricName there{"sweep", "load_delta", "1 nF at 0 V"};
+  const auto verdict = [&](Judgement j, const std::vector<MetricName>& m) {
+    return judge_part(part, missing(j, m), true).verdict;
+  };
+  CHECK(verdict(Judgement::no_go, {there}) == PartVerdict::met);
+  CHECK(verdict(Judgement::go, {}) == PartVerdict::failed);
+  CHECK(verdict(Judgement::void_, {}) == PartVerdict::in_doubt);
+  CHECK(verdict(Judgement::no_go, {{"sweep", "load_delta", "1 nF2 at 0 V"}}) == PartVerdict::failed);
+  CHECK(verdict(Judgement::no_go, {there, {"sweep", "load_delta", "10 nF at 0 V"}}) == PartVerdict::failed);
+  CHECK(verdict(Judgement::no_go, {there, {"offset", "offset", "1 nF at 0 V"}}) == PartVerdict::failed);
+  CHECK(judge_part(part, missing(Judgement::no_go, {there}), false).verdict == PartVerdict::in_doubt);
+}
+
+TEST_CASE("another part is met by a recorded GO in a confirmed safe state alone") {
+  JigCheckPart part;
+  part.purpose = Purpose::reference_board;
+  TrialEnd end = missing(Judgement::go, {});
+  CHECK(judge_part(part, end, true).verdict == PartVerdict::met);
+  CHECK(judge_part(part, end, false).verdict == PartVerdict::in_doubt);
+  end.safe_state = "loads discharged";
+  CHECK(judge_part(part, end, true).verdict == PartVerdict::failed);
+  const PartSays says = judge_part(part, missing(Judgement::void_, {{"loads", "released", "K27, load 1 nF"}}), true);
+  CHECK(says.verdict == PartVerdict::failed);
+  CHECK(says.why == "loads: released (K27, load 1 nF)");
+}
+
+TEST_CASE("the sample's check has three parts, and says what it can't tell") {
+  Faults faults;
+  const CheckPlans plans = read_check_plans(SOURCE_FOLDER "/sample-runs/jig-check.toml", faults);
+  REQUIRE_MESSAGE(plans.size() == 3, render(faults));
+  CHECK(plans[0]->plan.check.purpose == Purpose::jig_check);
+  CHECK(plans[1]->plan.check.purpose == Purpose::reference_board);
+  CHECK(plans[2]->plan.check.purpose == Purpose::reject_sample);
+  CHECK((untold(plans) == Words{"K22, supply to board", "series resistance of 100 pF, 330 pF, 1 nF, 3.3 nF, 10 nF"}));
+}
+
+TEST_CASE("a plan that is no part of a check is a fault") {
+  Faults faults;
+  CHECK(read_check_plans(SOURCE_FOLDER "/sample-runs/plan-a.toml", faults).empty());
+  CHECK(render(faults).find("plan \"bridge-amplifier-a\" is no part of a jig's check") != std::string::npos);
+}

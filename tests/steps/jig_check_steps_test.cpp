@@ -70,12 +70,12 @@ double copper(const Setting& s, const std::string& welded) {
   return closed(s, Role::meter_reversed) ? -V : V;
 }
 
-/// |level| at OUT behind 10 kohm, with Ru, C (and its series resistance) to ground.
+/// |level| at OUT behind 10 kohm and the source's 50 ohm, with Ru, C (and its series resistance) to ground.
 double level(double source_V, double f_Hz, double Ru, double C, double Rs = 0, double stray = 65e-12) {
   using Z = std::complex<double>;
   const Z jw(0, 2 * std::numbers::pi * f_Hz);
   const Z y = 1 / Ru + jw * stray + (C > 0 ? 1.0 / (Rs + 1.0 / (jw * C)) : Z{});
-  return std::abs(source_V / (1.0 + 10e3 * y));
+  return std::abs(source_V / (1.0 + 10.05e3 * y));
 }
 
 struct World {
