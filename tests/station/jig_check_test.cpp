@@ -128,10 +128,10 @@ TEST_CASE("a fault is JIG NOT OK, exit code 1, names the load, and leaves the la
   const Ran ran = run(folder, {"--yes", "--fault", "load-off:1 nF"});
   CHECK(ran.code == 1);
   CHECK(ran.page.ends_with("JIG NOT OK\n"));
-  CHECK(ran.says("! loads: capacitance (K27, load 1 nF)"));
+  CHECK(ran.says("! reference-loads: capacitance (K27, load 1 nF)"));
   CHECK(ran.says("NO-GO at 3.3 nF: not tried"));
   const ActRecord act = last_check(folder);
-  CHECK(act.reason == "check-reference: loads: capacitance (K27, load 1 nF)");
+  CHECK(act.reason == "check-reference: reference-loads: capacitance (K27, load 1 nF)");
   CHECK(act.values.at("result") == "failed");
   CHECK(act.values.count("check-copper") == 1);
   CHECK(act.values.count("check-reject") == 0);
