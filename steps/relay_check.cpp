@@ -5,6 +5,9 @@
 //   nest = "copper short"  probe loops and the meter's paths (in ohm: nothing or open), the reference, the reversal
 //   nest = "board"         a sound board without power: bleed, input short, tone, source, detector
 //   nest = "powered board" the ranges, by what they make of the output
+//   nest = "nothing"       the meter's zero, so that an open reading says something; then each probe's loop must be
+//   open
+//                          with its relay closed (`open`), or its two pins touch
 //
 // The board's supply relay is told by none of them: to see it open, the supply would have to stand before an open
 // contact, and close onto the board from there. Loads are the kind load-check's.
@@ -37,7 +40,7 @@ constexpr double least_share = 0.5;
 constexpr double tone_periods = 3;
 
 const std::vector<std::string>& nest_words() {
-  static const std::vector<std::string> words{"copper short", "board", "powered board"};
+  static const std::vector<std::string> words{"copper short", "board", "powered board", "nothing"};
   return words;
 }
 
@@ -46,6 +49,7 @@ std::vector<Role> roles_told(const std::string& nest) {
   if (nest == "board")
     return {Role::bleed, Role::input_short, Role::tone_to_output, Role::source_to_input, Role::detector_to_output};
   if (nest == "powered board") return {Role::range};
+  if (nest == "nothing") return {Role::meter_to_zero, Role::probe_loop};
   return {Role::probe_loop,        Role::meter_to_output,    Role::meter_to_input,
           Role::meter_to_rail_pos, Role::meter_to_rail_neg,  Role::meter_to_identity,
           Role::meter_to_zero,     Role::meter_to_reference, Role::meter_reversed};
@@ -73,7 +77,7 @@ bool drives(Role role) {
 
 /// How one relay is told.
 struct Entry {
-  int with{-1}, without{-1}, metric{-1};
+  int with{-1}, without{-1}, metric{-1};  ///< without < 0: read closed alone
   Role role{};
   Accuracy range;  ///< of the meter
   bool ohm{false}, detector{false};
@@ -107,6 +111,20 @@ class CheckMaker {
     const Unit unit = e.ohm ? Unit::ohm : Unit::volt;
     const std::string variant = relay_in_words(r);
     e.metric = layout_.metric("change", variant, unit, About::jig, e.least, std::nullopt);
+    entries_.push_back(std::move(e));
+  }
+
+  /// The loop of a probe that touches nothing.
+  void add_alone(std::size_t relay) {
+    const Relay& r = jig_.relays[relay];
+    Entry e;
+    e.role = r.role;
+    e.needs = {Role::meter_to_zero};
+    Setting s = path(r, e);
+    s.group = group_;
+    s.stop = Fixed{use_.readings};
+    e.with = layout_.add(std::move(s));
+    e.metric = layout_.metric("open", relay_in_words(r), Unit::ohm, About::jig, e.least, std::nullopt);
     entries_.push_back(std::move(e));
   }
 
@@ -307,8 +325,14 @@ class RelayCheckStep final : public Step {
     detector_ = context.jig->detector;
     CheckMaker maker(context, use);
     for (const Role role : roles_told(nest))
-      for (std::size_t i = 0; i < context.jig->relays.size(); ++i)
-        if (context.jig->relays[i].role == role && seen(context, context.jig->relays[i])) maker.add(i);
+      for (std::size_t i = 0; i < context.jig->relays.size(); ++i) {
+        const Relay& relay = context.jig->relays[i];
+        if (relay.role != role || !seen(context, relay)) continue;
+        if (nest == "nothing" && role == Role::probe_loop)
+          maker.add_alone(i);
+        else
+          maker.add(i);
+      }
     maker.add_source();
     source_metric_ = maker.source_metric();
     entries_ = maker.take_entries();
@@ -326,6 +350,7 @@ class RelayCheckStep final : public Step {
     std::vector<Seen> all;
     for (const Entry& e : entries_) {
       const auto with = played.sample(e.with), without = played.sample(e.without);
+      if (with && e.without < 0) all.push_back({&e, resistance(e, *with), *with});
       if (with && without) all.push_back({&e, change(e, *with, *without), *without});
     }
     const auto source = source_seen(all);
@@ -356,6 +381,18 @@ class RelayCheckStep final : public Step {
     const double size = std::abs((open_with ? top : with.mean) - (open_without ? top : without.mean));
     const double u = open_with || open_without ? nan : difference_u(e, with, without, size);
     return found(e.metric, state, size, u, std::max(with.n, 1) + std::max(without.n, 1));
+  }
+
+  /// At least the overload point, where the reading is over range.
+  Finding resistance(const Entry& e, const Sample& s) const {
+    const bool open = s.state == FindingState::over_range;
+    const double u = Combined()
+                         .add(scatter(s.sd, s.n, use_.noise(e.range)))
+                         .add(specified(e.range, s.mean))
+                         .add(rounding(e.range.resolution))
+                         .u();
+    return found(e.metric, open ? FindingState::measured : s.state, open ? e.range.overload * e.range.range : s.mean,
+                 open ? nan : u, std::max(s.n, 1));
   }
 
   double difference_u(const Entry& e, const Sample& with, const Sample& without, double size) const {
@@ -429,6 +466,7 @@ std::unique_ptr<Step> read_relay_check(TableReader& reader, const StepContext& c
   const CleanRead clean(reader, context);
   auto step = std::make_unique<RelayCheckStep>();
   const auto nest = reader.need_choice("nest", nest_words());
+  if (nest.value == "nothing") need_role(reader, context, Role::meter_to_zero);
   const MeterUse use = read_meter_use(reader, context, 2);
   if (!clean.ok()) return step;
   step->lay_out(context, nest.value, use);

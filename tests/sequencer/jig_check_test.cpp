@@ -84,7 +84,7 @@ std::string why(const TrialEnd& end) {
 TEST_CASE("a sound jig passes its check with twenty seeds, and finds the reject sample at its load") {
   for (std::uint64_t seed = 1; seed <= 20; ++seed) {
     INFO("seed " << seed);
-    for (const char* file : {"jig-check.toml", "reference.toml"}) {
+    for (const char* file : {"jig-check.toml", "empty.toml", "reference.toml"}) {
       const TrialEnd end = check(file, {}, seed);
       CHECK_MESSAGE(end.outcome.judgement == Judgement::go, file << ": " << why(end));
     }
@@ -191,7 +191,7 @@ TEST_CASE("a wrong meter, or one that repeats itself, fails the check on copper"
 }
 
 TEST_CASE("an empty nest, or the wrong thing in it, passes no part") {
-  for (const char* file : {"jig-check.toml", "reference.toml", "reject.toml"})
+  for (const char* file : {"jig-check.toml", "empty.toml", "reference.toml", "reject.toml"})
     for (const char* serial : {"CHECK-EMPTY", "CHECK-COPPER", "CHECK-0001"}) {
       if (part(file)->plan.check.serial == serial) continue;
       const TrialEnd end = check(file, {}, 1, serial);
@@ -277,13 +277,14 @@ TEST_CASE("another part is met by a recorded GO in a confirmed safe state alone"
   CHECK(says.why == "loads: released (K27, load 1 nF)");
 }
 
-TEST_CASE("the sample's check has three parts, and says what it can't tell") {
+TEST_CASE("the sample's check has four parts, and says what it can't tell") {
   Faults faults;
   const CheckPlans plans = read_check_plans(SOURCE_FOLDER "/sample-runs/jig-check.toml", faults);
-  REQUIRE_MESSAGE(plans.size() == 3, render(faults));
+  REQUIRE_MESSAGE(plans.size() == 4, render(faults));
   CHECK(plans[0]->plan.check.purpose == Purpose::jig_check);
-  CHECK(plans[1]->plan.check.purpose == Purpose::reference_board);
-  CHECK(plans[2]->plan.check.purpose == Purpose::reject_sample);
+  CHECK(plans[1]->plan.check.purpose == Purpose::jig_check);
+  CHECK(plans[2]->plan.check.purpose == Purpose::reference_board);
+  CHECK(plans[3]->plan.check.purpose == Purpose::reject_sample);
   CHECK((untold(plans) == Words{"K22, supply to board", "series resistance of 100 pF, 330 pF, 1 nF, 3.3 nF, 10 nF"}));
 }
 

@@ -120,7 +120,8 @@ TEST_CASE("a sound jig is JIG OK, exit code 0, and the act names every part's tr
   CHECK(act.who == "O. Perator");
   CHECK(act.about == "bench jig 1");
   CHECK(act.values.at("result") == "ok");
-  for (const char* part : {"check-copper", "check-reference", "check-reject"}) CHECK(act.values.at(part).size() == 36);
+  for (const char* part : {"check-copper", "check-empty", "check-reference", "check-reject"})
+    CHECK(act.values.at(part).size() == 36);
 }
 
 TEST_CASE("a fault is JIG NOT OK, exit code 1, names the load, and leaves the later parts untried") {
@@ -128,10 +129,10 @@ TEST_CASE("a fault is JIG NOT OK, exit code 1, names the load, and leaves the la
   const Ran ran = run(folder, {"--yes", "--fault", "load-off:1 nF"});
   CHECK(ran.code == 1);
   CHECK(ran.page.ends_with("JIG NOT OK\n"));
-  CHECK(ran.says("! reference-loads: capacitance (K27, load 1 nF)"));
+  CHECK(ran.says("! ref-loads: capacitance (K27, load 1 nF)"));
   CHECK(ran.says("NO-GO at 3.3 nF: not tried"));
   const ActRecord act = last_check(folder);
-  CHECK(act.reason == "check-reference: reference-loads: capacitance (K27, load 1 nF)");
+  CHECK(act.reason == "check-reference: ref-loads: capacitance (K27, load 1 nF)");
   CHECK(act.values.at("result") == "failed");
   CHECK(act.values.count("check-copper") == 1);
   CHECK(act.values.count("check-reject") == 0);
@@ -141,9 +142,9 @@ TEST_CASE("a silent meter, or nobody to answer, is exit code 2") {
   const Folder folder;
   CHECK(run(folder, {"--yes", "--fault", "meter-silent"}).code == 2);
   CHECK(last_check(folder).values.at("result") == "in doubt");
-  const Ran unplaced = run(folder, {"--answer", "check-copper=yes", "--answer", "check-reference=no"});
+  const Ran unplaced = run(folder, {"--answer", "check-copper=yes", "--answer", "check-empty=no"});
   CHECK(unplaced.code == 2);
-  CHECK(unplaced.says("not tried, answered no: Does the reference board lie in the nest"));
+  CHECK(unplaced.says("not tried, answered no: Is the nest empty"));
   CHECK(last_check(folder).values.at("result") == "in doubt");
 }
 

@@ -147,6 +147,20 @@ TEST_CASE("a missing reading proves no relay, closed or open") {
   }
 }
 
+TEST_CASE("in an empty nest a loop must be open, and one that reads a contact is missed") {
+  const Reduced d = done("relay-check", "nest = \"nothing\"", [](const Setting& s, double) {
+    return closed(s, Role::probe_loop, "OUT") || closed(s, Role::meter_to_zero) ? 0.3 : open_path;
+  });
+  CHECK(d.findings.size() == 10);
+  CHECK(d.met("change", "K17, meter to zero"));
+  CHECK_FALSE(d.met("open", "K2, probe loop OUT"));
+  CHECK(d.met("open", "K3, probe loop IN+"));
+  CHECK(d.of("open", "K3, probe loop IN+").value == doctest::Approx(120));
+  const Reduced deaf = done("relay-check", "nest = \"nothing\"", [](const Setting&, double) { return open_path; });
+  CHECK_FALSE(deaf.met("change", "K17, meter to zero"));
+  CHECK(deaf.of("open", "K3, probe loop IN+").state == FindingState::no_data);
+}
+
 TEST_CASE("a range's relay is told by what it makes of the output") {
   const auto output = [](const Setting& s, double) {
     const double gain = closed(s, Role::range, "x10") ? 10 : closed(s, Role::range, "x100") ? 100 : 1;
