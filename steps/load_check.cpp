@@ -53,8 +53,8 @@ constexpr double least_dwell_s = 2e-3;
 constexpr double open_room = 1.5;
 /// What remains is a load's when it is at least this share of it; within rest_share of it nothing else is left.
 constexpr double fits_share = 0.6, rest_share = 0.15;
-/// A load below this share of what hangs on the open output can't be told.
-constexpr double hidden_share = 5;
+/// A load of less than so many times what hangs on the open output already can't be told.
+constexpr double hidden_times = 5;
 constexpr double nan = std::numeric_limits<double>::quiet_NaN();
 
 struct LoadCheckKeys {
@@ -323,7 +323,7 @@ class LoadCheckStep final : public Step {
   void reduce_load(const LoadRead& read, const Base& base, const Open& open, const Records& played,
                    std::vector<Finding>& out) const {
     const bool hidden = open.state == FindingState::measured && open.C.value_F > open_room * open_F_ &&
-                        open.C.value_F * hidden_share > read.load.capacitance_F;
+                        open.C.value_F * hidden_times > read.load.capacitance_F;
     if (const auto tone = played.sample(read.tone)) {
       const auto all =
           tone_capacitance(scaled(tone_, read.tone_V), base.tone, tone->mean * tone_V / read.tone_V, read.frequency_Hz);
