@@ -7,6 +7,7 @@
 #include <vector>
 
 #include "base/source.hpp"
+#include "db/trial_record.hpp"
 #include "fixtures/jig.hpp"
 #include "limits/limit.hpp"
 #include "sequencer/serial.hpp"
@@ -21,6 +22,17 @@ struct LineRules {
   int first_articles{0};  ///< first boards of an order whose records an engineer approves before the line goes on
 };
 
+/// What a plan of the jig's check is about: a thing in the nest with a serial of its own, and the plan that follows.
+struct JigCheckPart {
+  Purpose purpose{Purpose::board};  ///< board = no part of a check
+  std::string serial;
+  std::string place;  ///< asked of the operator: what to lay into the nest
+  std::string next;   ///< plan file, resolved against the plan's folder; empty = the last part
+  /// Of a reject sample: the step that it must miss, and the load, as the finding's variant begins.
+  std::string must_miss, load;
+  SourceRegion region;
+};
+
 struct Plan {
   std::string id;  ///< "bridge-amplifier-sweep"
   std::string title;
@@ -29,6 +41,7 @@ struct Plan {
   BoardFacts board;
   SerialForm serial;
   LineRules line;
+  JigCheckPart check;
   bool stop_at_first_miss{false};
   double time_limit_s{};  ///< a trial longer than this is ended as VOID
   std::vector<std::unique_ptr<Step>> steps;

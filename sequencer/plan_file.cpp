@@ -44,6 +44,7 @@ class PlanReader {
     read_board();
     read_line();
     read_steps();
+    read_jig_check();
     root_.finish();
     check_power();
     return std::move(plan_);
@@ -61,6 +62,36 @@ class PlanReader {
     if (const auto n = r.integer("stop_after", 2, 100)) plan_.line.stop_after = static_cast<int>(n->value);
     if (const auto n = r.integer("first_articles", 0, 1000)) plan_.line.first_articles = static_cast<int>(n->value);
     r.finish();
+  }
+
+  void read_jig_check() {
+    static const std::vector<std::string> words{"jig check", "reference board", "reject sample"};  // order of Purpose
+    if (!root_.has("jig_check")) return;
+    const Node* node = root_.need_table("jig_check");
+    if (node == nullptr) return;
+    TableReader r(*node, "[jig_check]", faults_);
+    JigCheckPart& c = plan_.check;
+    c.region = node->region;
+    const auto word = r.need_choice("purpose", words);
+    const auto at = std::find(words.begin(), words.end(), word.value) - words.begin();
+    c.purpose = static_cast<Purpose>(1 + std::min<std::ptrdiff_t>(at, 2));
+    c.serial = r.need_text("serial").value;
+    c.place = r.need_text("place").value;
+    if (const auto next = r.text("next")) c.next = resolved(folder_, next->value);
+    if (c.purpose == Purpose::reject_sample) read_must_miss(r);
+    r.finish();
+  }
+
+  void read_must_miss(TableReader& r) {
+    const auto step = r.need_text("must_miss");
+    plan_.check.must_miss = step.value;
+    plan_.check.load = r.need_text("load").value;
+    std::vector<std::string> ids;
+    for (const auto& s : plan_.steps) ids.push_back(s->id);
+    if (step.value.empty() || std::find(ids.begin(), ids.end(), step.value) != ids.end()) return;
+    const auto near = nearest(step.value, ids);
+    r.fault(step.region, fmt::format("the plan has no step \"{}\"", step.value),
+            (near ? fmt::format("write \"{}\"; ", *near) : "") + "its steps: " + listed(ids));
   }
 
   void read_head() {

@@ -154,6 +154,7 @@ TrialStart Trials::start_of(int nest, std::string serial, std::string order) con
   start.nest = nest;
   start.at_us = setup_.utc_us ? setup_.utc_us() : 0;
   start.origin = setup_.origin;
+  start.purpose = setup_.purpose;
   start.operator_name = setup_.operator_name;
   start.program = setup_.program;
   start.depth = "full";
@@ -231,6 +232,7 @@ Task<TrialResult> Trials::run(int nest, std::string serial, std::string order) {
     observer_.trial_ended(nest, start, end, "Call the engineer: the store can't record.", &opened.error());
     co_return result;
   }
+  result.uuid = opened.value().uuid;
   observer_.trial_started(nest, start);
 
   Player player(bench_, leases_, rules_, person_, stop_, nest);

@@ -25,6 +25,7 @@ struct TrialSetup {
   std::string operator_name;
   std::string program;
   Origin origin{Origin::measured};
+  Purpose purpose{Purpose::board};
   std::vector<Document> documents;  ///< beyond plan, jig and limits: the scenario, dialects
   /// UTC now, microseconds since 1970: the stamp of a trial. A test's fake clock may stand in.
   std::function<std::int64_t()> utc_us;
@@ -33,6 +34,7 @@ struct TrialSetup {
 struct TrialResult {
   TrialStart start;
   TrialEnd end;
+  Uuid uuid{};           ///< of the record, once it was begun
   bool recorded{false};  ///< only a recorded trial may be shown as GO
 };
 

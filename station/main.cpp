@@ -12,6 +12,7 @@
 #include "station/commands.hpp"
 #include "station/desk.hpp"
 #include "station/exit_codes.hpp"
+#include "station/jig_check.hpp"
 #include "station/recompute.hpp"
 
 namespace {
@@ -157,6 +158,7 @@ int main(int argc, char** argv) {
   archive_command->add_option("--operator", archiving.operator_name, "who archives, for the record");
 
   DeskCommands desk(app);
+  JigCheckCommand checking(app);
 
   try {
     app.parse(argc, argv);
@@ -199,6 +201,7 @@ int main(int argc, char** argv) {
     return line(lining);
   }
   if (const auto code = desk.run(*station, store)) return *code;
+  if (const auto code = checking.run(*station, store, "jigwright " JIGWRIGHT_VERSION)) return *code;
   if (*try_command) {
     if (trying.serial.empty() && trying.order.empty()) {
       fmt::print(stderr, "jigwright: try: name --serial S or --order O\n");

@@ -164,6 +164,10 @@ Setting powered_setting(const StepContext& context, std::string id, std::string 
   return s;
 }
 
+std::string relay_in_words(const Relay& relay) {
+  return fmt::format("{}, {}{}{}", relay.id, role_name(relay.role), relay.of.empty() ? "" : " ", relay.of);
+}
+
 void short_input(Setting& setting, const Jig& jig) {
   if (jig.has(Role::input_short)) join(setting, jig, Role::input_short);
 }

@@ -27,6 +27,9 @@ Setting unpowered_setting(const StepContext& context, std::string id, std::strin
 /// A setting with the board supplied as its facts say. The caller chooses what the input sees.
 Setting powered_setting(const StepContext& context, std::string id, std::string shown);
 
+/// "K12, meter to input", "K27, load 1 nF": a relay in a metric's variant.
+std::string relay_in_words(const Relay& relay);
+
 /// Closes the input short, where the jig has one.
 void short_input(Setting& setting, const Jig& jig);
 

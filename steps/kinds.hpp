@@ -16,5 +16,9 @@ std::unique_ptr<Step> read_offset(TableReader& reader, const StepContext& contex
 std::unique_ptr<Step> read_gain(TableReader& reader, const StepContext& context);
 std::unique_ptr<Step> read_offset_under_load(TableReader& reader, const StepContext& context);
 std::unique_ptr<Step> read_question(TableReader& reader, const StepContext& context);
+std::unique_ptr<Step> read_relay_check(TableReader& reader, const StepContext& context);
+std::unique_ptr<Step> read_path_zero(TableReader& reader, const StepContext& context);
+std::unique_ptr<Step> read_source_check(TableReader& reader, const StepContext& context);
+std::unique_ptr<Step> read_load_check(TableReader& reader, const StepContext& context);
 
 }  // namespace jigwright
