@@ -29,7 +29,7 @@ CopySet copies_of_all(Database& db) {
   RecordFrames frames(db);
   std::unordered_set<std::string> held;
   std::string bytes;
-  for (const ChainRow& record : records) bytes += frames.of(record, held);
+  for (const ChainRow& record : records) bytes += must(frames.of(record, held));
   CopySet out;
   REQUIRE(read_frames(bytes, out) == bytes.size());
   return out;
