@@ -18,7 +18,7 @@ build check
 step "tests"
 # Sanitizer faults end with a code of their own, apart from the program's own exit codes.
 export ASAN_OPTIONS=exitcode=99:detect_leaks=1 UBSAN_OPTIONS=exitcode=99:print_stacktrace=1
-ctest --test-dir build-check --output-on-failure --timeout 300 -j 2
+ctest --test-dir build-check --output-on-failure --timeout 900 -j 2
 
 step "build the program"
 build release jigwright benchmark benchmark_store
@@ -34,6 +34,6 @@ sh tests/drill.sh --built 5 50
 
 step "benchmark"
 build/benchmark
-build/benchmark_store 5000
+build/benchmark_store 100000
 
 step "done"
