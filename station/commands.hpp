@@ -31,7 +31,6 @@ int try_boards(const TryOptions& options);
 struct LineOptions {
   std::string plan, order, store, station_name, language, program;
   std::vector<std::string> faults;                           ///< of the simulated jig
-  std::vector<std::pair<std::string, std::string>> answers;  ///< step, answer
   std::uint64_t seed{1};
   BackupPlan backups;
   bool virtual_time{false};

@@ -84,7 +84,8 @@ class Line final : public LineHost, public Observer, public Person {
   AdoptedNow adopted(const std::string& order) override {
     Transaction reading(reader_, Transaction::Kind::read);
     const auto found = adopted_for(reader_, order);
-    return found ? AdoptedNow{true, differing(*found, files_), found->number} : AdoptedNow{};
+    return answer(reader_.result(found ? AdoptedNow{true, differing(*found, files_), found->number} : AdoptedNow{}),
+                  AdoptedNow{});
   }
   std::optional<PersonNow> person(const std::string& badge_or_name) override {
     Transaction reading(reader_, Transaction::Kind::read);
@@ -166,14 +167,6 @@ class Line final : public LineHost, public Observer, public Person {
   // --- Person ------------------------------------------------------------------------------------------------------
 
   Task<Result<Reading>> ask(int, const Ask& question, Duration) override {
-    for (const auto& [step, answer] : options_.answers)
-      if (step == question.step) {
-        Reading r;
-        r.value = answer == "yes" ? 1 : answer == "no" ? 0 : std::atof(answer.c_str());
-        r.at = clock_->now();
-        r.state = ReadingState::ok;
-        co_return r;
-      }
     co_return Error{
         Error::Kind::person, fmt::format("nobody answered \"{}\"", question.question), "step " + question.step, {}};
   }

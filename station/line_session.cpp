@@ -51,7 +51,9 @@ void LineSession::begin() {
   enter(State::keyboard);
 }
 
+/// A store that can't record or answer ends the line: nothing but the end of the program leads on from there.
 void LineSession::enter(State state) {
+  if (state_ == State::dead && state != State::ended) return show();
   state_ = state;
   view_.secret = state == State::password || state == State::stop_password;
   view_.live.clear();
@@ -59,6 +61,7 @@ void LineSession::enter(State state) {
 }
 
 void LineSession::say(std::string word, Shape shape, std::vector<std::string> lines, std::string action) {
+  if (state_ == State::dead) return;
   view_.word = std::move(word);
   view_.shape = shape;
   view_.lines = std::move(lines);
@@ -354,6 +357,7 @@ void LineSession::take_serial(const std::string& scan) {
   if (const auto why = not_in_force(order)) return refuse(*why);
   if (const Bar bar = board.standing.may_try(setup_.plan.plan.line.retests); bar != Bar::none)
     return refuse(barred(bar, board));
+  if (state_ == State::dead) return;  // the store failed to answer: what came back is no answer
   serial_ = board.serial;
   order_ = order;
   board_ = board;

@@ -3,6 +3,7 @@
 
 #include <doctest/doctest.h>
 
+#include <functional>
 #include <map>
 
 #include "station/cards.hpp"
@@ -15,6 +16,7 @@ class FakeLine final : public LineHost {
  public:
   std::int64_t now_us() override { return 1'767'960'000'000'000; }
   BoardNow board(const std::string& serial) override {
+    if (when_asked) when_asked();
     if (const auto found = boards.find(serial); found != boards.end()) return found->second;
     BoardNow unknown;
     unknown.serial = serial;
@@ -47,6 +49,7 @@ class FakeLine final : public LineHost {
   void show(const LineView& v) override { view = v; }
   void quit() override { left = true; }
 
+  std::function<void()> when_asked;
   std::map<std::string, BoardNow> boards;
   OrderCounts counts{240, 0, 0, 0, 0, 0};
   AdoptedNow in_force{true, "", 4};
@@ -460,4 +463,18 @@ TEST_CASE("a board scanned before anybody has logged in logs nobody in") {
   b.begin(false);
   for (const std::string& scan : {test_code(), std::string("TB3-0001"), std::string("XJ01")}) b.scan(scan);
   CHECK(!b.session->logged_in());
+}
+
+TEST_CASE("a store that fails to answer a scan ends the line: no trial, and no way on") {
+  Shift b;
+  b.begin();
+  b.line.counts = {};  // what a host gives in place of an answer
+  b.line.when_asked = [&b] { b.session->record_failed({Error::Kind::store, "the file is damaged", "results.db", ""}); };
+  b.scan("TB3-0777");
+  CHECK(b.line.started.empty());
+  CHECK(has(b.shown(), "NOT RECORDED. Try no further board. the file is damaged"));
+  b.line.when_asked = nullptr;
+  b.scan("TB3-0001");
+  CHECK(b.line.started.empty());
+  CHECK(b.line.view.word == "LINE STOPPED");
 }
