@@ -30,7 +30,7 @@ int try_boards(const TryOptions& options);
 
 struct LineOptions {
   std::string plan, order, store, station_name, language, program;
-  std::vector<std::string> faults;                           ///< of the simulated jig
+  std::vector<std::string> faults;  ///< of the simulated jig
   std::uint64_t seed{1};
   BackupPlan backups;
   bool virtual_time{false};
